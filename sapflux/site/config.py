@@ -1,0 +1,196 @@
+"""`site.toml` as validated objects: position, clock, common step, logs and their layouts."""
+
+import codecs
+import difflib
+from pathlib import PurePosixPath, PureWindowsPath
+from typing import Annotated, Literal
+from zoneinfo import available_timezones
+
+from pydantic import BaseModel, ConfigDict, Field, field_validator, model_validator
+
+
+class Strict(BaseModel):
+    """Unknown keys and wrong types are faults; objects do not change once made."""
+
+    model_config = ConfigDict(strict=True, extra="forbid", frozen=True, allow_inf_nan=False)
+
+
+class Position(Strict):
+    """`[site]`: where the site is and how it counts time."""
+
+    name: Annotated[str, Field(min_length=1)]
+    latitude_deg: Annotated[float, Field(ge=-90, le=90)]
+    longitude_deg: Annotated[float, Field(ge=-180, le=180)]
+    elevation_m: Annotated[float, Field(ge=-450, le=6000)]
+    utc_offset_h: Annotated[float, Field(ge=-12, le=14)]
+    water_year_start: Annotated[str, Field(pattern=r"^\d\d-\d\d$")]
+    common_step_min: Annotated[int, Field(ge=1, le=60)]
+
+    @field_validator("utc_offset_h")
+    @classmethod
+    def _offset_is_in_use(cls, value):
+        if value * 4 != round(value * 4):
+            raise ValueError(
+                f"{value:g} is no whole number of quarter hours",
+                "Give standard time minus UTC in hours, like 1.0 or -3.5.",
+            )
+        return value
+
+    @field_validator("water_year_start")
+    @classmethod
+    def _day_comes_every_year(cls, value):
+        return month_day(value)
+
+    @field_validator("common_step_min")
+    @classmethod
+    def _step_divides_the_hour(cls, value):
+        if 60 % value:
+            raise ValueError(
+                f"{value} does not divide the hour",
+                "Give minutes that do: 1, 2, 3, 4, 5, 6, 10, 12, 15, 20, 30 or 60.",
+            )
+        return value
+
+
+def month_day(value):
+    """A month and day that every year has. ValueError (what, remedy) otherwise.
+
+    >>> month_day("10-01")
+    '10-01'
+    """
+    month, day = map(int, value.split("-"))
+    if not (
+        1 <= month <= 12 and 1 <= day <= (31, 28, 31, 30, 31, 30, 31, 31, 30, 31, 30, 31)[month - 1]
+    ):
+        raise ValueError(
+            f"{value!r} is not a day of every year", "Write month and day, like '10-01'."
+        )
+    return value
+
+
+class LongTable(Strict):
+    """A long table: each row is one value, named by its `name_columns`.
+
+    The channel's `column` is then those names joined by "/", for example "T07/dT".
+    """
+
+    name_columns: Annotated[tuple[str, ...], Field(min_length=1, strict=False)]
+    value_column: str
+
+
+class Layout(Strict):
+    """How a log's text is laid out. Columns are found by name, never by position."""
+
+    delimiter: Literal[",", ";", "tab", "|", "space"] = ","
+    decimal: Literal[".", ","] = "."
+    quote: Literal['"', "'", ""] = '"'
+    encoding: str = "utf-8"
+    comment: str = ""  # lines that begin with this are comments; blank: none
+    names_line: Annotated[int, Field(ge=1)] = 1  # 1 is the first line of the file
+    units_line: Annotated[int, Field(ge=0)] = 0  # 0: the file has none
+    aggregation_line: Annotated[int, Field(ge=0)] = 0
+    header_lines: Annotated[int, Field(ge=0)] = 0  # 0: up to the last of the lines above
+    time_columns: Annotated[tuple[str, ...], Field(min_length=1, max_length=3, strict=False)] = (
+        "TIMESTAMP",
+    )
+    # strptime format of the time columns joined by one blank; or "year_day_hhmm" for
+    # year, day of year and hhmm with 2400 (three columns)
+    time_format: str = "%Y-%m-%d %H:%M:%S"
+    missing_text: Annotated[tuple[str, ...], Field(strict=False)] = ("", "NAN", "NaN", "nan", "NA")
+    missing_numbers: Annotated[tuple[float, ...], Field(strict=False)] = ()
+    long: LongTable | None = None
+
+    @property
+    def first_data_line(self):
+        """Number of header lines at the top of a file."""
+        return max(self.header_lines, self.names_line, self.units_line, self.aggregation_line)
+
+    @property
+    def separator(self):
+        """The delimiter as a character."""
+        return {"tab": "\t", "space": " "}.get(self.delimiter, self.delimiter)
+
+    @model_validator(mode="after")
+    def _decimal_is_not_delimiter(self):
+        if self.decimal == self.separator:
+            raise ValueError(
+                f"decimal mark and delimiter are both {self.decimal!r}", "One of them must differ."
+            )
+        return self
+
+    @field_validator("encoding")
+    @classmethod
+    def _encoding_exists(cls, value):
+        try:
+            codecs.lookup(value)
+        except LookupError:
+            raise ValueError(
+                f"no encoding is called {value!r}", "Use 'utf-8', 'latin-1', 'cp1252' or 'utf-16'."
+            ) from None
+        return value
+
+
+class Log(Strict):
+    """`[logs.NAME]`: one logger table."""
+
+    files: Annotated[tuple[str, ...], Field(min_length=1, strict=False)]  # patterns
+    layout: str  # name of a [layouts.NAME]
+    interval_min: Annotated[float, Field(gt=0, le=1440)]
+    stamp: Literal["end", "start"]  # which end of its interval a stamp marks
+    # "utc", "utc+1", "utc-3.5" (fixed offset), or "civil:ZONE" of the IANA time zone table
+    clock: Annotated[str, Field(pattern=r"^(utc([+-]\d{1,2}(\.\d+)?)?|civil:[A-Za-z_+\-/0-9]+)$")]
+
+    @field_validator("files")
+    @classmethod
+    def _files_stay_in_the_folder(cls, patterns):
+        for pattern in patterns:
+            inside = PurePosixPath(pattern.replace("\\", "/"))
+            if (
+                not pattern
+                or inside.is_absolute()
+                or ".." in inside.parts
+                or PureWindowsPath(pattern).drive
+            ):
+                raise ValueError(
+                    f"{pattern!r} leads out of the site folder",
+                    "Give a path below the folder, like 'raw/T1*.dat'.",
+                )
+            if "\\" in pattern:
+                raise ValueError(f"{pattern!r} has a backslash", "Part folders by '/'.")
+        return patterns
+
+    @field_validator("interval_min")
+    @classmethod
+    def _interval_divides_the_day(cls, value):
+        seconds = value * 60
+        if seconds != round(seconds) or 86400 % seconds:
+            raise ValueError(
+                f"{value:g} does not divide the day into whole seconds",
+                "Give the minutes from one record to the next, like 10 or 0.5.",
+            )
+        return value
+
+    @field_validator("clock")
+    @classmethod
+    def _clock_exists(cls, value):
+        kind, _, zone = value.partition(":")
+        if kind == "civil" and zone not in available_timezones():
+            raise ValueError(f"no time zone is called {zone!r}", _zone_hint(zone))
+        if kind != "civil" and len(value) > 3 and not -12 <= float(value[3:]) <= 14:
+            raise ValueError(f"{value!r} is no offset in use", "Offsets lie from utc-12 to utc+14.")
+        return value
+
+
+def _zone_hint(zone):
+    """The closest zones: all of them would be six hundred."""
+    close = difflib.get_close_matches(zone, available_timezones(), n=1)
+    guess = f"Did you mean 'civil:{close[0]}'? " if close else ""
+    return f"{guess}Use a name of the IANA time zone table, like 'civil:Europe/Vienna'."
+
+
+class SiteConfig(Strict):
+    """The whole of `site.toml`."""
+
+    site: Position
+    layouts: dict[str, Layout] = {}
+    logs: dict[str, Log] = {}

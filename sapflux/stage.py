@@ -1,0 +1,124 @@
+"""What a stage is: a plain function, registered under its own name.
+
+Parameters before `/` are found by name: variables and coordinates of the cube, weather on the
+records, `solar_elevation`, `solar_time`, or the table of this stage or an earlier one; one with a
+default may be absent. Parameters after `*` are settings of the recipe, and carry their unit in
+their name. A stage looks at one record; or at a window, whose reach it declares; or it
+*summarises*: `summarise` reduces a block to table rows, `fit` is called once on the rows of all
+probes and the whole span, and the stage then evaluates the fitted table on a block.
+
+A stage returns one array for one name, or a dict of all that it declared. It turns a value into
+NaN only where it also returns a masking flag.
+"""
+
+import inspect
+from collections.abc import Callable
+from dataclasses import dataclass, field
+
+CHAINS = ("heat_dissipation", "heat_ratio", "scaling")
+
+
+@dataclass(frozen=True)
+class Stage:
+    """A registered stage. Read by the runner; the function itself stays untouched."""
+
+    name: str
+    function: Callable
+    chain: str
+    makes: tuple
+    flags: tuple
+    table: str = ""
+    summarise: Callable | None = None
+    fit: Callable | None = None
+    reach_s: Callable | None = None
+    method_needs: dict = field(default_factory=dict)
+    after: tuple = ()
+    limits: dict = field(default_factory=dict)
+
+    @property
+    def needs(self):
+        """Names that must be there (positional parameters without a default)."""
+        return tuple(n for n, p in _positional(self.function) if p.default is p.empty)
+
+    @property
+    def reads(self):
+        """All names the stage may read, of its own and of its `summarise`."""
+        names = [n for n, _ in _positional(self.function)]
+        if self.summarise:
+            names += [n for n, _ in _positional(self.summarise) if n not in names]
+        return tuple(names)
+
+    @property
+    def settings(self):
+        """name -> inspect.Parameter of each setting, in order."""
+        parameters = inspect.signature(self.function).parameters.values()
+        return {p.name: p for p in parameters if p.kind is p.KEYWORD_ONLY}
+
+    def defaults(self):
+        """The settings as they stand when the recipe is silent."""
+        return {n: p.default for n, p in self.settings.items() if p.default is not p.empty}
+
+
+REGISTRY = {}  # (chain, name) -> Stage
+
+
+def stage(*, chain, makes=(), flags=(), **declared):
+    """Register a function as a stage and return it untouched.
+
+    chain : name or names of the recipe lists it may stand in (see `CHAINS`).
+    makes, flags : variables and quality flags it returns.
+    table : name of its table; summarise, fit : the functions that make it (see module).
+    reach_s : settings -> seconds it looks to either side of a record, or of a row's start.
+    method_needs : method -> names needed by that `method` setting only.
+    after : stages that, where the recipe lists them, must come earlier than this one.
+    limits : setting -> (lowest, highest) allowed.
+
+    ValueError if the chain has a stage of that name.
+    """
+
+    def register(function):
+        name = function.__name__
+        for one in _names(chain):
+            if (one, name) in REGISTRY:
+                raise ValueError(f"stage {name!r} stands twice in {one}")
+            REGISTRY[one, name] = Stage(
+                name=name,
+                function=function,
+                chain=one,
+                makes=_names(makes),
+                flags=_names(flags),
+                **declared,
+            )
+        return function
+
+    return register
+
+
+def _names(value):
+    return (value,) if isinstance(value, str) else tuple(value)
+
+
+def _positional(function):
+    parameters = inspect.signature(function).parameters.values()
+    return [(p.name, p) for p in parameters if p.kind is p.POSITIONAL_ONLY]
+
+
+def bind(function, available, settings):
+    """Call `function` with the arrays and settings that its signature names.
+
+    `available` maps names to arrays or tables; KeyError names one that is needed and missing.
+    """
+    arguments = []
+    for name, parameter in _positional(function):
+        if name in available:
+            arguments.append(available[name])
+        elif parameter.default is parameter.empty:
+            raise KeyError(name)
+        else:
+            arguments.append(parameter.default)
+    named = {
+        p.name: settings[p.name]
+        for p in inspect.signature(function).parameters.values()
+        if p.kind is p.KEYWORD_ONLY and p.name in settings
+    }
+    return function(*arguments, **named)

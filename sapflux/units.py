@@ -1,0 +1,72 @@
+"""Units of logger columns and tables, and how they become SI."""
+
+import re
+
+# unit as written -> (SI unit, factor, offset): si = value * factor + offset.
+# Factors are exact by definition (SI brochure, 9th edition, 2019).
+UNITS = {
+    "1": ("1", 1.0, 0.0),
+    "%": ("1", 0.01, 0.0),
+    "V": ("V", 1.0, 0.0),
+    "mV": ("V", 1e-3, 0.0),
+    "uV": ("V", 1e-6, 0.0),
+    "A": ("A", 1.0, 0.0),
+    "mA": ("A", 1e-3, 0.0),
+    "K": ("K", 1.0, 0.0),
+    "degC": ("K", 1.0, 273.15),
+    "degF": ("K", 5.0 / 9.0, 459.67 * 5.0 / 9.0),
+    "Pa": ("Pa", 1.0, 0.0),
+    "hPa": ("Pa", 100.0, 0.0),
+    "kPa": ("Pa", 1000.0, 0.0),
+    "MPa": ("Pa", 1e6, 0.0),
+    "W m-2": ("W m-2", 1.0, 0.0),
+    "m": ("m", 1.0, 0.0),
+    "cm": ("m", 1e-2, 0.0),
+    "mm": ("m", 1e-3, 0.0),
+    "um": ("m", 1e-6, 0.0),
+    "m s-1": ("m s-1", 1.0, 0.0),
+    "cm h-1": ("m s-1", 0.01 / 3600.0, 0.0),
+    "mm h-1": ("m s-1", 0.001 / 3600.0, 0.0),
+    "cm s-1": ("m s-1", 0.01, 0.0),
+    "m3 m-3": ("1", 1.0, 0.0),
+    "m3 s-1": ("m3 s-1", 1.0, 0.0),
+    "L s-1": ("m3 s-1", 1e-3, 0.0),
+    "kg m-2": ("kg m-2", 1.0, 0.0),
+    "mm water": ("kg m-2", 1.0, 0.0),
+}
+
+# A temperature difference has no offset, whatever scale it is written in.
+DIFFERENCE_FACTORS = {"K": 1.0, "degC": 1.0, "degF": 5.0 / 9.0}
+
+
+def accepted(si_unit):
+    """The units a column may be written in when the quantity is `si_unit` inside."""
+    return [unit for unit, (si, _, _) in UNITS.items() if si == si_unit]
+
+
+def to_si(values, unit, *, difference=False):
+    """Values as written, in SI. KeyError for a unit that is not in the table.
+
+    `difference` marks a temperature difference, which takes no offset.
+
+    >>> to_si(3.6, "cm h-1")
+    1e-05
+    >>> to_si(20.0, "degC")
+    293.15
+    >>> to_si(8.0, "degC", difference=True)
+    8.0
+    """
+    if difference and unit in DIFFERENCE_FACTORS:
+        return values * DIFFERENCE_FACTORS[unit]
+    _, factor, offset = UNITS[unit]
+    return values * factor + offset if offset else values * factor
+
+
+def unit_of_key(key):
+    """The unit a config key carries after its name, or '' if it carries none.
+
+    >>> unit_of_key("wound_width_mm")
+    'mm'
+    """
+    found = re.search(r"_(mm|cm|m2|m|K|kPa|Pa|h|min|s|d|deg|V|ohm|cm2_s|kg_m3|g_m2_s|J_m)$", key)
+    return found.group(1) if found else ""
