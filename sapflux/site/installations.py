@@ -1,0 +1,54 @@
+"""Installations of probes: episodes with a start and an end, numbered from 0 for each probe.
+
+A re-drilled or re-wired probe is a new installation: nothing that looks along time, be it a
+baseline, an offset or a wound, reaches across.
+"""
+
+import numpy as np
+
+
+def episodes(site, probe):
+    """Rows of `probes.csv` of a probe, earliest first: their places are installation numbers."""
+    rows = [row for row in site.table("probes") if row.probe == probe]
+    return sorted(rows, key=lambda row: row.installed)
+
+
+def latest_begun(site, probes, times_end, interval_s):
+    """Number of the installation that began last before each record, (probe, time) int16.
+
+    Before the first installation it is the first. It goes on through the gap after a removal, so
+    that facts laid by it hang on the moment alone, not on which other records are looked at.
+
+    times_end : (time) datetime64, ends of the records [UTC]; interval_s : their length [s].
+    """
+    begins = times_end - np.timedelta64(int(interval_s), "s")
+    numbers = np.zeros((len(probes), len(times_end)), dtype=np.int16)
+    for place, probe in enumerate(probes):
+        starts = [site.utc(row.installed) for row in episodes(site, probe)]
+        if len(starts) > 1:
+            found = np.searchsorted(np.array(starts), begins, side="right") - 1
+            numbers[place] = np.maximum(found, 0)
+    return numbers
+
+
+def installation_numbers(site, probes, times_end, interval_s):
+    """Number of the installation each record belongs to, (probe, time) int16; -1 outside.
+
+    A record belongs where its whole interval lies in [installed, removed).
+
+    times_end : (time) datetime64, ends of the records [UTC]; interval_s : their length [s].
+    """
+    begins = times_end - np.timedelta64(int(interval_s), "s")
+    numbers = latest_begun(site, probes, times_end, interval_s)
+    for place, probe in enumerate(probes):
+        rows = episodes(site, probe)
+        if not rows:
+            numbers[place] = -1
+            continue
+        own = numbers[place]
+        installed = np.array([site.utc(row.installed) for row in rows])
+        still_in = np.datetime64("NaT", "s")
+        removed = np.array([site.utc(row.removed, still_in) for row in rows])[own]
+        inside = (begins >= installed[own]) & ((times_end <= removed) | np.isnat(removed))
+        numbers[place] = np.where(inside, own, -1)
+    return numbers

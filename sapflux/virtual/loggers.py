@@ -1,0 +1,105 @@
+"""Text of logger files: the layouts of a site, written."""
+
+from datetime import UTC, datetime, timedelta, timezone
+from zoneinfo import ZoneInfo
+
+import numpy as np
+
+
+def clock_times(end, log):
+    """What the logger's clock showed at each record, as naive `datetime`s.
+
+    end : (record) datetime64[s], end of the interval in UTC; log : clock, stamp, interval_min as
+    in `site.toml`.
+    """
+    if log.stamp == "start":
+        end = end - np.timedelta64(round(log.interval_min * 60), "s")
+    zone = _zone(log.clock)
+    moments = (datetime.fromtimestamp(int(s), UTC) for s in end.astype("datetime64[s]").astype(int))
+    return [moment.astimezone(zone).replace(tzinfo=None) for moment in moments]
+
+
+def stamp_cells(times, layout):
+    """The time columns of each record: a list of tuples of text.
+
+    >>> from sapflux.site.config import Layout
+    >>> layout = Layout(time_columns=("y", "d", "hm"), time_format="year_day_hhmm")
+    >>> stamp_cells([datetime(2031, 9, 2, 0, 0), datetime(2031, 9, 2, 0, 30)], layout)
+    [('2031', '244', '2400'), ('2031', '245', '30')]
+    """
+    if layout.time_format == "year_day_hhmm":
+        return [_year_day_hhmm(time) for time in times]
+    parts = layout.time_format.split(" ")
+    columns = len(layout.time_columns)
+    forms = parts if columns == len(parts) else [layout.time_format]
+    cells = [tuple(time.strftime(form) for form in forms) for time in times]
+    mark = layout.quote if layout.quote and columns == 1 and layout.delimiter == "," else ""
+    return [tuple(f"{mark}{cell}{mark}" for cell in row) for row in cells]
+
+
+def number_cells(values, decimals, layout, missing):
+    """Numbers as the logger prints them; `missing` where NaN.
+
+    >>> from sapflux.site.config import Layout
+    >>> number_cells([1.25, float("nan")], 1, Layout(delimiter=";", decimal=","), "-6999")
+    ['1,2', '-6999']
+    """
+    cells = []
+    for value in values:
+        text = missing if np.isnan(value) else f"{value:.{decimals}f}"
+        if not text.strip("-0."):
+            text = text.lstrip("-")  # no minus before a rounded zero
+        cells.append(text if text == missing else text.replace(".", layout.decimal))
+    return cells
+
+
+def header_lines(layout, names, units, aggregations, note):
+    """The lines at the top of a file: names, units and aggregation where the layout has them.
+
+    names, units, aggregations : of the value columns in file order; note : text for lines that
+    carry none of the three.
+    """
+    quoted = layout.quote and layout.delimiter == ","
+
+    def line(cells):
+        marked = [f"{layout.quote}{cell}{layout.quote}" for cell in cells] if quoted else cells
+        return layout.separator.join(marked)
+
+    blank = [""] * (len(layout.time_columns) - 1)
+    lines = {
+        layout.names_line: line([*layout.time_columns, *names]),
+        layout.units_line: line(["", *blank, *units]),
+        layout.aggregation_line: line(["", *blank, *aggregations]),
+    }
+    return [lines.get(number, line([note])) for number in range(1, layout.first_data_line + 1)]
+
+
+def data_lines(layout, stamps, columns, order):
+    """Records as text, one a line.
+
+    stamps : as `stamp_cells` gives them; columns : name -> (record) text; order : names in file
+    order.
+    """
+    rows = zip(stamps, *(columns[name] for name in order), strict=True)
+    return [layout.separator.join([*row[0], *row[1:]]) for row in rows]
+
+
+def as_bytes(lines, line_end="\n", last_end=None):
+    """Lines as the bytes of a file; `last_end` ends the last line in place of `line_end`."""
+    if not lines:
+        return b""
+    text = line_end.join(lines) + (line_end if last_end is None else last_end)
+    return text.encode("utf-8")
+
+
+def _year_day_hhmm(time):
+    day, hhmm = time, time.hour * 100 + time.minute
+    if hhmm == 0:
+        day, hhmm = time - timedelta(days=1), 2400
+    return str(day.year), str(day.timetuple().tm_yday), str(hhmm)
+
+
+def _zone(clock):
+    if clock.startswith("civil:"):
+        return ZoneInfo(clock.removeprefix("civil:"))
+    return timezone(timedelta(hours=float(clock.removeprefix("utc") or 0)))
