@@ -1,0 +1,135 @@
+"""The command line: the only place that prints.
+
+Exit codes: 0 done (refused periods are printed); 1 failed; 2 usage or configuration; 3 finished,
+but some sites failed; 130 interrupted.
+"""
+
+import argparse
+import sys
+
+from sapflux import __version__
+
+DONE, FAILED, USAGE, SOME_FAILED, INTERRUPTED = 0, 1, 2, 3, 130
+
+
+def main(arguments=None):
+    """Run one command and return its exit code."""
+    options = parser().parse_args(arguments)
+    if not hasattr(options, "command"):
+        parser().print_help()
+        return USAGE
+    from sapflux.errors import RecipeError, SiteError, UserError
+
+    try:
+        return options.command(options)
+    except (SiteError, RecipeError) as error:
+        return _tell(error, USAGE)
+    except UserError as error:
+        return _tell(error, FAILED)
+    except KeyboardInterrupt:
+        print("interrupted; what was finished before stands as it was", file=sys.stderr)
+        return INTERRUPTED
+    except BrokenPipeError:
+        return DONE
+
+
+def _tell(error, code):
+    for fault in error.faults:
+        print(fault, file=sys.stderr)
+    count = len(error.faults)
+    print(f"{count} fault{'s' if count > 1 else ''}; nothing was changed", file=sys.stderr)
+    return code
+
+
+def parser():
+    """The arguments of every command. Imports nothing heavy, so that --help is quick."""
+    top = argparse.ArgumentParser(
+        prog="sapflux",
+        description="Logger downloads of thermal sap flow probes in; tree water use and stand "
+        "transpiration out, with an account of every line read.",
+    )
+    top.add_argument("--version", action="version", version=f"sapflux {__version__}")
+    commands = top.add_subparsers(metavar="COMMAND")
+
+    start = commands.add_parser("init", help="write a commented starter site")
+    start.add_argument("folder", metavar="DIR", help="the new site folder")
+    start.add_argument(
+        "--from",
+        dest="files",
+        nargs="+",
+        metavar="FILE",
+        default=[],
+        help="logger files whose headers the layouts and channels are drafted from",
+    )
+    start.set_defaults(command=_init)
+
+    check = commands.add_parser("check", help="validate a site, reading only the files' headers")
+    _sites(check)
+    check.set_defaults(command=_check)
+
+    run = commands.add_parser("run", help="downloads in, stand millimetres out")
+    _sites(run)
+    run.add_argument("--out", metavar="DIR", default="results", help="default: results")
+    run.add_argument("--jobs", type=_count, default=1, metavar="N", help="sites at the same time")
+    run.add_argument(
+        "--native", action="store_true", help="also write each method's signals at the native step"
+    )
+    run.add_argument(
+        "--keep-all",
+        action="store_true",
+        help="keep every file of earlier runs, not only their tables",
+    )
+    run.add_argument(
+        "--dry-run",
+        action="store_true",
+        help="check the site and the recipe, list the files, run nothing",
+    )
+    run.set_defaults(command=_run)
+
+    stages = commands.add_parser("stages", help="what each stage does, its settings and sources")
+    stages.add_argument("name", metavar="NAME", nargs="?", help="one stage, in full")
+    stages.add_argument("--json", action="store_true", help="print JSON alone")
+    stages.set_defaults(command=_stages)
+    return top
+
+
+def _sites(command):
+    command.add_argument("sites", metavar="SITE", nargs="+", help="site folder")
+    command.add_argument(
+        "--recipe",
+        metavar="NAME",
+        default="stand_water_use",
+        help="recipe by name, or a TOML file; default: stand_water_use",
+    )
+    command.add_argument("--json", action="store_true", help="print JSON alone")
+
+
+def _count(text):
+    number = int(text)
+    if number < 1:
+        raise argparse.ArgumentTypeError("takes a whole number from 1")
+    return number
+
+
+def _init(options):
+    from sapflux.cli.starter import init
+
+    return init(options)
+
+
+def _check(options):
+    from sapflux.cli.check import check
+
+    return check(options)
+
+
+def _run(options):
+    from sapflux.cli.run import run
+
+    return run(options)
+
+
+def _stages(options):
+    from sapflux.cli.stages import stages
+
+    return stages(options)

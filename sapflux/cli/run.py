@@ -1,0 +1,117 @@
+"""`sapflux run`: one site or many; a failing site does not stop the others."""
+
+import sys
+
+from sapflux.cli.text import columns, count, millimetres, print_json, share
+from sapflux.pipeline.batch import dry_run, run_sites
+
+CAUTIONS = (
+    "These are estimates of transpiration, not of evapotranspiration: interception and soil",
+    "evaporation are separate. No interval is given yet, and the spread between probes is not one:",
+    "shared errors of calibration and radial shape are larger. Not for licensing, allocation or",
+    "litigation without an independent check.",
+)
+
+
+def run(options):
+    """Run the sites and print what came of each; see `sapflux.cli` for the exit codes."""
+    if options.dry_run:
+        return _dry_run(options)
+    outcomes = []
+    several = len(options.sites) > 1
+    for outcome in run_sites(
+        options.sites,
+        jobs=options.jobs,
+        recipe=options.recipe,
+        out=options.out,
+        native=options.native,
+        keep_all=options.keep_all,
+    ):
+        outcomes.append(outcome)
+        if not options.json:
+            _print(outcome, several)
+    failed = [outcome for outcome in outcomes if outcome.faults]
+    if options.json:
+        print_json(
+            {outcome.path: outcome.summary or {"faults": outcome.faults} for outcome in outcomes}
+        )
+    elif several:
+        _print_summary(outcomes)
+    if not failed:
+        return 0
+    if len(failed) < len(outcomes):
+        return 3
+    return 2 if all(outcome.usage for outcome in failed) else 1
+
+
+def _dry_run(options):
+    plans = {path: dry_run(path, options.recipe) for path in options.sites}
+    if options.json:
+        print_json(plans)
+        return 0
+    for path, plan in plans.items():
+        print(f"{path}: {plan['site']}; recipe {plan['recipe']}")
+        for name, files in plan["files"].items():
+            print(f"  log {name}: {count(len(files), 'file')}")
+        for line in plan["steps"]:
+            print(f"  {line}")
+        print("Nothing was run.")
+    return 0
+
+
+def _print(outcome, several):
+    if outcome.faults:
+        for fault in outcome.faults:
+            print(fault, file=sys.stderr)
+        print(f"{outcome.path}: failed; its former results stand as they were", file=sys.stderr)
+        return
+    found = outcome.summary
+    print(f"{found['site']}, {found['from']} to {found['to']}, recipe {found['recipe']}")
+    ledger = found["ledger"]
+    classes = ", ".join(f"{number:,} {name}" for name, number in ledger.items() if name != "lines")
+    print(f"  {count(found['files'], 'file')}, {count(ledger['lines'], 'line')}: {classes}")
+    print("\n  Season totals, over the days that may be totalled")
+    rows = [
+        [
+            row["stand"],
+            row["species"],
+            millimetres(row["transpiration_mm"]),
+            str(row["days"]),
+            str(row["days_refused"]),
+            share(row["measured_fraction"]),
+            share(row["filled_fraction"]),
+            row["reason"],
+        ]
+        for row in found["season"]
+    ]
+    header = ["stand", "species", "mm", "days", "refused", "measured", "filled", ""]
+    for line in columns(rows, header, right=header[2:7]):
+        print(f"  {line}")
+    for line in found["notes"]:
+        print(f"\n  {line}")
+    print(f"\n  Written to {found['folder']} ({found['seconds']:.1f} s), run {found['identity']}:")
+    for line in columns([[name, what] for name, what in found["written"]], ["", ""])[1:]:
+        print(f"    {line}")
+    if not several:
+        print()
+        for line in CAUTIONS:
+            print(f"  {line}")
+    print()
+
+
+def _print_summary(outcomes):
+    rows = [
+        [
+            outcome.path,
+            "failed" if outcome.faults else "ok",
+            f"{outcome.seconds:.1f}",
+            outcome.faults[0] if outcome.faults else "",
+        ]
+        for outcome in outcomes
+    ]
+    for line in columns(rows, ["site", "outcome", "seconds", ""], right=["seconds"]):
+        print(line)
+    failed = sum(bool(outcome.faults) for outcome in outcomes)
+    print(f"{len(outcomes) - failed} ok, {failed} failed")
+    for line in CAUTIONS:
+        print(line)

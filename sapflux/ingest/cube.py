@@ -1,0 +1,130 @@
+"""The measured cube: one for each method and native interval, on its own clock."""
+
+import numpy as np
+import xarray as xr
+
+from sapflux import quality, schema
+from sapflux.ingest.channels import single_series, values_of
+from sapflux.ingest.series import grid, on_records, place
+
+# Series of a whole logger or tree that a stage may ask for beside the probe's own signal.
+BESIDE = {"heater_voltage": "log", "heater_state": "log", "stem_temperature": "tree"}
+
+
+def measured_cubes(site, logs):
+    """Cubes of the measured signals, by (method, interval in seconds).
+
+    logs : name -> log series as `read_log` gives them.
+    Each cube is a Dataset with dims (probe, point, time), its signals in SI as measured, and
+    `quality`; `interval_s` is in its attributes. Probes without any record are left in, so that
+    they are counted.
+    """
+    groups = {}
+    for channel in site.table("channels"):
+        if channel.kind != "probe" or channel.log not in logs:
+            continue
+        method = _method(site, channel.id)
+        if method and channel.quantity in schema.SIGNALS[method]:
+            key = (method, logs[channel.log].interval_s)
+            groups.setdefault(key, []).append(channel)
+    return {key: _cube(site, logs, key, channels) for key, channels in sorted(groups.items())}
+
+
+def probe_names(site, method):
+    """Probes of a method, in the order of `probes.csv`, each once."""
+    return list(dict.fromkeys(p.probe for p in site.table("probes") if p.method == method))
+
+
+def _method(site, probe):
+    return next((p.method for p in site.table("probes") if p.probe == probe), None)
+
+
+def _cube(site, logs, key, channels):
+    method, interval_s = key
+    used = {channel.id for channel in channels}
+    probes = [name for name in probe_names(site, method) if name in used]
+    points = max(channel.point for channel in channels)
+    spans = [logs[channel.log].end for channel in channels if len(logs[channel.log].end)]
+    if spans:
+        time = grid(min(s[0] for s in spans), max(s[-1] for s in spans), interval_s)
+    else:
+        time = np.empty(0, dtype="datetime64[s]")
+    shape = (len(probes), points, len(time))
+    signals = {c.quantity: np.full(shape, np.nan) for c in channels}
+    expected = np.zeros(shape, dtype=bool)
+    absent = np.zeros(shape, dtype=bool)
+    conflicting = np.zeros(shape, dtype=bool)
+    beyond = np.zeros(shape, dtype=bool)
+    for channel in channels:
+        series = logs[channel.log]
+        rows, values, withheld = values_of(channel, series, site)
+        if not len(rows):
+            continue
+        at = place(series.end[rows], time[0], interval_s)
+        where = (probes.index(channel.id), channel.point - 1, at)
+        row = schema.QUANTITIES[channel.quantity]
+        signals[channel.quantity][where] = values
+        expected[where] = True
+        absent[where] |= np.isnan(values)
+        conflicting[where] |= withheld
+        with np.errstate(invalid="ignore"):
+            beyond[where] |= (values < row.low) | (values > row.high)
+    excluded = _excluded(site, probes, channels, time, interval_s)[:, None, :]
+    bits = quality.bits(
+        no_record=~expected | absent,
+        conflicting=conflicting,
+        out_of_range=beyond,
+        excluded=np.broadcast_to(excluded, shape),
+    )
+    variables = {name: (schema.RECORD, values) for name, values in signals.items()}
+    variables["quality"] = (schema.RECORD, bits)
+    variables.update(_beside(site, logs, probes, channels, time, interval_s))
+    coords = {
+        "probe": np.array(probes, dtype=object).astype(str),
+        "point": np.arange(1, points + 1),
+        "time": time.astype("datetime64[ns]"),
+    }
+    return xr.Dataset(variables, coords, attrs={"method": method, "interval_s": interval_s})
+
+
+def _excluded(site, probes, channels, time, interval_s):
+    """(probe, time) where `exclusions.csv` takes the records out."""
+    out = np.zeros((len(probes), len(time)), dtype=bool)
+    trees = {p.probe: p.tree for p in site.table("probes")}
+    stands = {t.tree: t.stand for t in site.table("trees")}
+    logs_of = {}
+    for channel in channels:
+        logs_of.setdefault(channel.id, set()).add(channel.log)
+    start = time - np.timedelta64(interval_s, "s")
+    for row in site.table("exclusions"):
+        overlaps = (time > site.utc(row.from_)) & (start < site.utc(row.to))
+        for index, probe in enumerate(probes):
+            tree = trees.get(probe)
+            names = {
+                "probe": {probe},
+                "tree": {tree},
+                "log": logs_of.get(probe, set()),
+                "stand": {stands.get(tree)},
+            }
+            if row.id in names[row.kind]:
+                out[index] |= overlaps
+    return out
+
+
+def _beside(site, logs, probes, channels, time, interval_s):
+    """Series of the probe itself, of its logger or of its tree, laid on the records."""
+    trees = {p.probe: p.tree for p in site.table("probes")}
+    log_of = {channel.id: channel.log for channel in channels}
+    found = {}
+    for name, kind in BESIDE.items():
+        owners = {"log": log_of, "tree": trees}[kind]
+        rows = np.full((len(probes), len(time)), np.nan)
+        for index, probe in enumerate(probes):
+            series = single_series(site, logs, "probe", name, probe)
+            if series is None:
+                series = single_series(site, logs, kind, name, owners.get(probe))
+            if series is not None:
+                rows[index] = on_records(series, time, interval_s)
+        if np.isfinite(rows).any():
+            found[name] = (schema.PROBE, rows)
+    return found

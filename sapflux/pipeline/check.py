@@ -1,0 +1,80 @@
+"""What can be told of a site before its data are read: tables, recipe, headers."""
+
+from sapflux.errors import DataError, Fault, SiteError, nearest
+from sapflux.ingest.logs import match_files, read_header
+from sapflux.pipeline.plan import methods_of, plan_faults
+from sapflux.pipeline.recipe import load_recipe
+from sapflux.site.load import load_site
+
+
+def check_site(path, recipe="stand_water_use"):
+    """Counts and notes of a valid site; SiteError or RecipeError with every fault.
+
+    Reads the headers of the downloads only. A plan without logs is valid.
+    """
+    site = load_site(path)
+    recipe = load_recipe(recipe)
+    faults, notes, files = header_faults(site)
+    faults += plan_faults(site, recipe)
+    if faults:
+        raise SiteError(faults)
+    if not site.logs:
+        notes.append("a plan without logs: it can be checked, but there is nothing to run")
+    elif not methods_of(site):
+        notes.append("no channel carries a sap-flow signal yet")
+    return {
+        "site": site.position.name,
+        "probes": len({row.probe for row in site.table("probes")}),
+        "trees": len(site.table("trees")),
+        "stands": len({row.stand for row in site.table("trees")}),
+        "logs": len(site.logs),
+        "files": files,
+        "notes": notes,
+    }
+
+
+def header_faults(site):
+    """(faults, notes, number of files): whether the logs have the columns the channels name."""
+    faults, notes, count = [], [], 0
+    for name, log in site.logs.items():
+        layout = site.layouts[log.layout]
+        try:
+            paths = match_files(site, name)
+        except DataError as error:
+            faults += error.faults
+            continue
+        count += len(paths)
+        headers = {}
+        for path in paths:
+            try:
+                headers[path] = list(read_header(path, layout))
+            except DataError as error:
+                notes += [str(fault) for fault in error.faults]
+        known = {column for header in headers.values() for column in header}
+        if not headers:
+            continue
+        wanted = list(layout.time_columns)
+        if layout.long:
+            wanted += [*layout.long.name_columns, layout.long.value_column]
+        for column in wanted:
+            if column not in known:
+                faults.append(
+                    Fault(
+                        f"{site.folder}/site.toml, [layouts.{log.layout}]",
+                        f"no file of log {name!r} has the column {column!r}",
+                        nearest(column, known),
+                    )
+                )
+        if not layout.long:
+            faults += _channel_faults(site, name, known)
+    return faults, notes, count
+
+
+def _channel_faults(site, log, known):
+    for row, line in zip(site.table("channels"), site.rows_at["channels"], strict=True):
+        if row.log == log and row.column not in known:
+            yield Fault(
+                f"{site.folder}/channels.csv, row {line}",
+                f"no file of log {log!r} has a column {row.column!r}",
+                nearest(row.column, known),
+            )

@@ -1,0 +1,194 @@
+"""One site from its files to its results, in memory."""
+
+import time as clock
+from dataclasses import dataclass, field
+
+import numpy as np
+import pandas as pd
+import xarray as xr
+
+from sapflux import schema
+from sapflux.errors import DataError, Fault
+from sapflux.ingest.cube import measured_cubes
+from sapflux.ingest.logs import read_log
+from sapflux.ingest.weather import weather_series
+from sapflux.pipeline.beside import probe_chain_beside, scaling_beside
+from sapflux.pipeline.check import header_faults
+from sapflux.pipeline.execute import BLOCK_DAYS, Chain, fitted_tables, run_blocks
+from sapflux.pipeline.installations import FlagCounts, installation_table
+from sapflux.pipeline.join import Joined, common_grid
+from sapflux.pipeline.totals import total_tables
+from sapflux.site import facts
+
+
+@dataclass
+class Computed:
+    """Everything a run found, not yet written."""
+
+    logs: dict  # name -> log series
+    probes: xr.Dataset = None  # flux density on the common step
+    trees: xr.Dataset = None
+    stand: xr.Dataset = None
+    native: dict = field(default_factory=dict)  # method -> Dataset at the native step
+    tables: dict = field(default_factory=dict)  # name -> DataFrame
+    evidence: dict = field(default_factory=dict)  # table of a summarising stage -> DataFrame
+    history: list = field(default_factory=list)  # one line a stage
+    notes: list = field(default_factory=list)  # what a person should know first
+    seconds: dict = field(default_factory=dict)
+
+
+def compute(site, recipe, *, native=False, block_days=BLOCK_DAYS):
+    """Run the recipe on the site. The recipe must have been checked against the site.
+
+    DataError where the site has no logs, or its files lack what the channels name.
+    """
+    stopwatch = _Stopwatch()
+    logs = _read_logs(site)
+    stopwatch.lap("read")
+    found = Computed(logs)
+    cubes = measured_cubes(site, logs)
+    weather = weather_series(site, logs)
+    stopwatch.lap("assemble")
+    step_s = site.position.common_step_min * 60
+    ends = common_grid(cubes.values(), step_s)
+    if not len(ends):
+        raise DataError(
+            Fault(
+                str(site.folder),
+                "the downloads hold no record of a probe",
+                "See check, and the from and to of channels.csv.",
+            )
+        )
+    joined = Joined(list(cubes.values()), ends, step_s, recipe.join["least_coverage"])
+    counts, first = FlagCounts(), 0
+    for (method, interval_s), cube in cubes.items():
+        chain = Chain(
+            _labelled(site, cube), recipe.chains[method], probe_chain_beside(site, cube, weather)
+        )
+        _run_method(chain, joined, first, found, counts, method, native, block_days)
+        first += cube.sizes["probe"]
+        found.history += [f"{step.line()} at {interval_s} s" for step in chain.steps]
+    stopwatch.lap("correct")
+    found.probes = _labelled(site, joined.dataset())
+    found.history.append(f"join: {dict(recipe.join)!r} to {step_s} s")
+    _scale(site, recipe, found, weather, block_days)
+    stopwatch.lap("scale")
+    found.tables["installations"] = installation_table(site, counts, found.evidence)
+    found.tables |= total_tables(site, recipe, found, weather)
+    stopwatch.lap("total")
+    found.seconds = stopwatch.seconds
+    return found
+
+
+def _read_logs(site):
+    if not site.logs:
+        raise DataError(
+            Fault(
+                f"{site.folder}/site.toml",
+                "the site has no logs: it is a plan",
+                "Name its downloads under [logs.NAME].",
+            )
+        )
+    faults, _, _ = header_faults(site)
+    if faults:
+        raise DataError(faults)
+    return {name: read_log(site, name) for name in site.logs}
+
+
+def _labelled(site, cube):
+    labels = facts.labels(site, [str(name) for name in cube["probe"].values])
+    coords = {name: ("probe", np.array(values, dtype=str)) for name, values in labels.items()}
+    return cube.assign_coords(coords)
+
+
+def _run_method(chain, joined, first, found, counts, method, native, block_days):
+    tables = fitted_tables(chain, block_days)
+    for name, rows in tables.items():
+        known = found.evidence.get(name)
+        found.evidence[name] = rows if known is None else pd.concat([known, rows])
+    kept = []
+    wanted = ("installation",)
+    for block, working in run_blocks(chain, tables, block_days, wanted):
+        core = {"time": block.core}
+        flux = working.variables["flux_density"].isel(core).transpose(*schema.RECORD)
+        bits = working.quality[schema.RECORD].isel(core).transpose(*schema.RECORD)
+        record_ends = chain.ends[block.whole][block.core]
+        joined.add(first, flux.values, bits.values, record_ends, chain.interval_s)
+        counts.add(chain.cube, working.variables["installation"].isel(core).values, bits.values)
+        if native:
+            kept.append(_native_part(working, bits, core))
+    if native:
+        whole = xr.concat(
+            kept, "time", data_vars="minimal", coords="minimal", compat="override", join="override"
+        )
+        for name in chain.cube.data_vars:
+            if name != "quality":
+                whole[f"{name}" if name not in whole else f"measured_{name}"] = chain.cube[name]
+        found.native[method, chain.interval_s] = whole.assign_attrs(chain.cube.attrs)
+
+
+def _native_part(working, bits, core):
+    made = {
+        name: value.isel(core)
+        for name, value in working.variables.items()
+        if isinstance(value, xr.DataArray)
+        and value.dims == schema.RECORD
+        and name in schema.VARIABLES
+        and name not in ("quality", "origin")
+    }
+    return xr.Dataset({**made, "quality": bits}).drop_attrs()
+
+
+def _scale(site, recipe, found, weather, block_days):
+    """Run the scaling chain and keep what it makes for probes, trees and stands."""
+    steps = recipe.chains["scaling"]
+    chain = Chain(
+        found.probes.drop_vars("quality"),
+        steps,
+        scaling_beside(site, found.probes, weather),
+        spread_flags=False,
+    )
+    tables = fitted_tables(chain, block_days)
+    found.evidence |= tables
+    parts = {}
+    for block, working in run_blocks(chain, tables, block_days, ("in_leaf",)):
+        made = {n: working.variables[n] for step in steps for n in step.stage.makes}
+        if "in_leaf" in working.variables:
+            made["in_leaf"] = working.variables["in_leaf"]
+        for name, value in made.items():
+            parts.setdefault(name, []).append(value.isel(time=block.core))
+        for dims, bits in working.quality.items():
+            parts.setdefault(f"quality {dims[0]}", []).append(bits.isel(time=block.core))
+    joined = {name: _along_time(values, found.probes["time"]) for name, values in parts.items()}
+    found.history += [step.line() for step in steps]
+    for name in ("flux_density", "origin", "probe_flow"):
+        if name in joined:
+            found.probes[name] = joined[name].variable
+    found.trees = _level(joined, "tree")
+    found.stand = _level(joined, "stand_species")
+
+
+def _along_time(values, time):
+    whole = xr.concat(values, "time", coords="minimal", compat="override", join="override")
+    return whole.assign_coords(time=time.values)
+
+
+def _level(joined, dim):
+    """Dataset of what lies along `dim`, its flags as `quality`; None if nothing does."""
+    of_dim = {n: v for n, v in joined.items() if dim in v.dims}
+    if not of_dim:
+        return None
+    renamed = {("quality" if n == f"quality {dim}" else n): v for n, v in of_dim.items()}
+    return xr.Dataset(renamed).transpose(dim, "time")
+
+
+class _Stopwatch:
+    """Seconds between laps."""
+
+    def __init__(self):
+        self.seconds, self._last = {}, clock.perf_counter()
+
+    def lap(self, name):
+        now = clock.perf_counter()
+        self.seconds[name] = round(now - self._last, 3)
+        self._last = now

@@ -1,0 +1,159 @@
+"""Run a chain of stages along time, block by block.
+
+A stage that summarises needs the whole span before it can be evaluated: the steps before it run
+over all blocks once to gather its rows, it is fitted, and the chain starts again. The chain after
+parsing is cheap, so nothing is kept at the native step between these passes.
+"""
+
+from dataclasses import dataclass, field
+
+import numpy as np
+import pandas as pd
+import xarray as xr
+
+from sapflux import quality, schema
+from sapflux.pipeline.blocks import blocks, span
+from sapflux.stage import bind
+
+BLOCK_DAYS = 12
+
+
+@dataclass(frozen=True)
+class Chain:
+    """What a chain runs on.
+
+    cube : Dataset of measured variables with `time`, and `quality` if it has flags already.
+    steps : tuple of Step.
+    beside : (block's ends [UTC, datetime64[s]], names wanted) -> name -> DataArray: facts,
+        weather and sun on those records.
+    spread_flags : whether a flag of fewer dims is spread over all points (method chains).
+    """
+
+    cube: xr.Dataset
+    steps: tuple
+    beside: object
+    spread_flags: bool = True
+
+    @property
+    def interval_s(self):
+        """Seconds of a record."""
+        return int(self.cube.attrs["interval_s"])
+
+    @property
+    def ends(self):
+        """Ends of the records, datetime64[s]."""
+        return self.cube["time"].values.astype("datetime64[s]")
+
+
+@dataclass
+class Working:
+    """The variables of one block while the stages run over it."""
+
+    variables: dict
+    quality: dict = field(default_factory=dict)  # dims -> int32 DataArray
+
+
+def fitted_tables(chain, block_days=BLOCK_DAYS):
+    """Fit every summarising stage of the chain: table name -> DataFrame."""
+    tables = {}
+    for index, step in enumerate(chain.steps):
+        if step.stage.summarise is None:
+            continue
+        rows = [
+            _summary(chain, step, index, block, tables)
+            for block in blocks(
+                chain.ends, chain.interval_s, _reach(chain.steps[: index + 1]), block_days
+            )
+        ]
+        tables[step.stage.table] = _fit(step, [part for part in rows if len(part)] or rows)
+    return tables
+
+
+def run_blocks(chain, tables, block_days=BLOCK_DAYS, also=()):
+    """Yield (block, working) for each block after all stages; only the block's core holds good.
+
+    also : names beside those the stages read that the working set must hold.
+    """
+    reach = _reach(chain.steps)
+    for block in blocks(chain.ends, chain.interval_s, reach, block_days):
+        yield block, _run(chain, chain.steps, block, tables, also)
+
+
+def _reach(steps):
+    """Seconds of halo that keep the core right: each stage spoils at most its own reach."""
+    return sum(step.stage.reach_s(step.settings) for step in steps if step.stage.reach_s)
+
+
+def _summary(chain, step, index, block, tables):
+    working = _run(chain, chain.steps[:index], block, tables, step.stage.reads)
+    rows = bind(step.stage.summarise, working.variables, step.settings)
+    first, last = span(chain.ends, chain.interval_s, block)
+    start = rows["start"].to_numpy().astype("datetime64[s]")
+    return rows[(start >= first) & (start < last)]
+
+
+def _fit(step, parts):
+    rows = pd.concat(parts, ignore_index=True) if parts else pd.DataFrame()
+    keys = [key for key in ("probe", "point", "start") if key in rows]
+    rows = rows.sort_values(keys, kind="stable", ignore_index=True) if keys else rows
+    return bind_rows(step.stage.fit, rows, step.settings) if step.stage.fit else rows
+
+
+def bind_rows(fit, rows, settings):
+    """Call a `fit` with its rows and the settings that its signature names."""
+    import inspect
+
+    parameters = inspect.signature(fit).parameters
+    return fit(rows, **{name: settings[name] for name in parameters if name in settings})
+
+
+def _run(chain, steps, block, tables, also=()):
+    """The working set of a block after `steps`."""
+    part = chain.cube.isel(time=block.whole)
+    wanted = {name for step in steps for name in step.stage.reads} | set(also)
+    variables = {name: part[name] for name in part.data_vars if name != "quality"}
+    variables |= chain.beside(chain.ends[block.whole], wanted)
+    variables |= tables
+    working = Working(variables)
+    if "quality" in part:
+        _add_flags(working, part["quality"])
+    for step in steps:
+        _apply(step, working, chain.spread_flags)
+    return working
+
+
+def _apply(step, working, spread_flags):
+    stage = step.stage
+    result = bind(stage.function, working.variables, step.settings)
+    if not isinstance(result, dict):
+        result = {stage.makes[0]: result}
+    unknown = result.keys() - {*stage.makes, *stage.flags}
+    if unknown:
+        raise TypeError(f"stage {stage.name!r} returned what it did not declare: {unknown}")
+    for name in stage.makes:
+        if name in result:
+            made = result[name]
+            made.attrs = schema.VARIABLES[name].attributes()  # replaced whole, never merged
+            working.variables[name] = made
+    flagged = {name: result[name] for name in stage.flags if name in result}
+    for name, where in flagged.items():
+        bits = xr.where(where, np.int32(quality.FLAGS[name].mask), np.int32(0))
+        record = working.quality.get(schema.RECORD)
+        if spread_flags and record is not None and bits.dims != schema.RECORD:
+            bits = bits.broadcast_like(record).transpose(*schema.RECORD)
+        _add_flags(working, bits)
+
+
+def _add_flags(working, bits):
+    """Keep the bits, and take masked records from the working variables of the same dims."""
+    dims = bits.dims
+    known = working.quality.get(dims)
+    bits = bits.astype(np.int32)
+    working.quality[dims] = bits if known is None else known | bits
+    masked = quality.masked(bits.values)
+    if not masked.any():
+        return
+    for name, variable in working.variables.items():
+        array = isinstance(variable, xr.DataArray)
+        if array and variable.dims == dims and variable.dtype.kind == "f":
+            working.variables[name] = variable.where(~masked)

@@ -1,0 +1,88 @@
+"""The join: probes of every method and interval on the site's common step."""
+
+import numpy as np
+import xarray as xr
+
+from sapflux import quality, schema
+from sapflux.ingest.series import grid
+
+
+def common_grid(cubes, step_s):
+    """Ends of the common steps that cover all cubes, datetime64[s]."""
+    step = np.timedelta64(step_s, "s")
+    firsts, lasts = [], []
+    for cube in cubes:
+        if cube.sizes["time"]:
+            ends = cube["time"].values.astype("datetime64[s]")
+            firsts.append(ends[0] - np.timedelta64(int(cube.attrs["interval_s"]), "s"))
+            lasts.append(ends[-1])
+    if not firsts:
+        return np.empty(0, dtype="datetime64[s]")
+    midnight = min(firsts).astype("datetime64[D]").astype("datetime64[s]")
+    first = midnight + ((min(firsts) - midnight) // step + 1) * step
+    last = midnight + -(-(max(lasts) - midnight) // step) * step
+    return grid(first, last, step_s)
+
+
+class Joined:
+    """Flux density, quality and origin of all probes on the common step, filled block by block.
+
+    Means are weighted with the covered time, which for the equal records of one cube is their
+    count; a step with less than `least_coverage` of its records is NaN and flagged. A step keeps
+    every flag of its records, also where the rest of the step gives a value.
+    """
+
+    def __init__(self, cubes, ends, step_s, least_coverage):
+        probes = [str(name) for cube in cubes for name in cube["probe"].values]
+        points = max((cube.sizes["point"] for cube in cubes), default=1)
+        shape = (len(probes), points, len(ends))
+        self.probes, self.ends, self.step_s = probes, ends, step_s
+        self.least_coverage = least_coverage
+        self.flux = np.full(shape, np.nan)
+        self.quality = np.full(shape, quality.FLAGS["no_record"].mask, dtype=np.int32)
+        self.coverage = np.zeros(shape, dtype=np.float32)
+
+    def add(self, first_probe, flux, bits, record_ends, interval_s):
+        """Lay the core of one block of one cube: arrays (probe, point, time)."""
+        per_step = self.step_s // interval_s
+        step = np.timedelta64(self.step_s, "s")
+        start = self.ends[0] - step
+        number = ((record_ends - np.timedelta64(1, "s") - start) // step).astype(np.int64)
+        low, high = number[0], number[-1] + 1
+        slot = (record_ends - (start + number * step)) // np.timedelta64(interval_s, "s") - 1
+        shape = (*flux.shape[:2], high - low, per_step)
+        values = np.full(shape, np.nan)
+        flags = np.full(shape, quality.FLAGS["no_record"].mask, dtype=np.int32)
+        values[:, :, number - low, slot] = flux
+        flags[:, :, number - low, slot] = bits
+        there = np.isfinite(values)
+        count = there.sum(axis=-1)
+        share = count / per_step
+        enough = (count > 0) & (share >= self.least_coverage)
+        with np.errstate(invalid="ignore", divide="ignore"):
+            mean = np.where(there, values, 0.0).sum(axis=-1) / count
+        joined = np.bitwise_or.reduce(flags, axis=-1) | quality.bits(
+            partly_missing=(count > 0) & (count < per_step), incomplete_step=~enough
+        )
+        probes = slice(first_probe, first_probe + flux.shape[0])
+        points = slice(0, flux.shape[1])
+        self.flux[probes, points, low:high] = np.where(enough, mean, np.nan)
+        self.quality[probes, points, low:high] = joined
+        self.coverage[probes, points, low:high] = share
+
+    def dataset(self):
+        """The joined cube."""
+        origin = np.where(np.isfinite(self.flux), quality.ORIGINS["measured"], 0).astype(np.int8)
+        return xr.Dataset(
+            {
+                "flux_density": (schema.RECORD, self.flux),
+                "quality": (schema.RECORD, self.quality),
+                "origin": (schema.RECORD, origin),
+            },
+            {
+                "probe": np.array(self.probes, dtype=str),
+                "point": np.arange(1, self.flux.shape[1] + 1),
+                "time": self.ends.astype("datetime64[ns]"),
+            },
+            attrs={"interval_s": self.step_s},
+        )

@@ -1,0 +1,249 @@
+"""Recipes: how data are treated, read from TOML and bound to the stages' own signatures."""
+
+import inspect
+import tomllib
+from dataclasses import dataclass
+from importlib import resources
+from pathlib import Path
+from types import MappingProxyType
+from typing import Literal, get_args, get_origin
+
+import sapflux.correction
+import sapflux.scaling
+from sapflux.errors import Fault, RecipeError, nearest
+from sapflux.scaling.completeness import Completeness
+from sapflux.stage import CHAINS, REGISTRY, Stage
+
+# Settings of the two parts of a recipe that are no stages: default, lowest, highest.
+JOIN = {"least_coverage": (0.75, 0.0, 1.0)}
+
+
+@dataclass(frozen=True)
+class Step:
+    """One stage of a chain with all its settings."""
+
+    stage: Stage
+    settings: MappingProxyType
+    number: int  # place in its list, from 1
+
+    def line(self):
+        """The step as one history line, every setting spelled out."""
+        spelled = ", ".join(f"{name}={value!r}" for name, value in self.settings.items())
+        return f"{self.stage.chain}: {self.stage.name}({spelled})"
+
+
+@dataclass(frozen=True)
+class Recipe:
+    """A recipe with every setting resolved."""
+
+    name: str
+    title: str
+    where: str  # the file, for messages
+    chains: MappingProxyType  # chain -> tuple of Step
+    join: MappingProxyType
+    totals: MappingProxyType
+
+    def resolved(self):
+        """The recipe as plain data: what `run.json` keeps and the identity is made of."""
+        steps = {
+            chain: [{"stage": step.stage.name, **step.settings} for step in steps]
+            for chain, steps in self.chains.items()
+        }
+        return {
+            "name": self.name,
+            "title": self.title,
+            **steps,
+            "join": dict(self.join),
+            "totals": dict(self.totals),
+        }
+
+
+def recipe_folders():
+    """Where recipes are found by name: in the package, or beside it in a checkout."""
+    package = Path(str(resources.files("sapflux")))
+    return [
+        folder for folder in (package / "recipes", package.parent / "pipelines") if folder.is_dir()
+    ]
+
+
+def recipe_names():
+    """Names of the recipes that come with the program."""
+    return sorted({path.stem for folder in recipe_folders() for path in folder.glob("*.toml")})
+
+
+def find_recipe(name):
+    """Path of a recipe, given by name or as a path to a TOML file.
+
+    RecipeError if there is none.
+    """
+    path = Path(name)
+    if path.suffix == ".toml":
+        if path.is_file():
+            return path
+        raise RecipeError(Fault(str(name), "no such recipe file", "Give the path of a TOML file."))
+    for folder in recipe_folders():
+        if (folder / f"{name}.toml").is_file():
+            return folder / f"{name}.toml"
+    raise RecipeError(Fault("--recipe", f"no recipe {name!r}", nearest(name, recipe_names())))
+
+
+def load_recipe(name="stand_water_use"):
+    """A recipe by name or path. RecipeError carries every fault in it."""
+    path = find_recipe(name)
+    where = f"pipelines/{path.name}" if path.parent in recipe_folders() else str(name)
+    try:
+        raw = tomllib.loads(path.read_text(encoding="utf-8"))
+    except (tomllib.TOMLDecodeError, UnicodeDecodeError) as error:
+        raise RecipeError(
+            Fault(where, f"not readable as TOML: {error}", "Mend that line.")
+        ) from None
+    return read_recipe(raw, where, path.stem)
+
+
+def read_recipe(raw, where, name):
+    """A recipe from parsed TOML. RecipeError carries every fault in it."""
+    faults = []
+    known = {"title", "join", "totals", *CHAINS}
+    for key in raw.keys() - known:
+        faults.append(Fault(where, f"unknown part {key!r}", nearest(key, known)))
+    chains = {}
+    for chain in CHAINS:
+        steps = raw.get(chain, [])
+        if not _list_of_tables(steps):
+            faults.append(
+                Fault(
+                    where,
+                    f"{chain} is not a list of stages",
+                    f"Write each stage under its own [[{chain}]].",
+                )
+            )
+            steps = []
+        chains[chain] = tuple(
+            step
+            for number, table in enumerate(steps, 1)
+            if (step := _step(table, chain, number, where, faults))
+        )
+        faults += _order_faults(chains[chain], where)
+    if not any(chains.values()) and not faults:
+        faults.append(Fault(where, "the recipe has no stage", "List stages under [[scaling]], ..."))
+    totals = {k: (v, *Completeness.limits()[k]) for k, v in Completeness.defaults().items()}
+    recipe = Recipe(
+        name=name,
+        title=str(raw.get("title", name)),
+        where=where,
+        chains=MappingProxyType(chains),
+        join=MappingProxyType(_plain(raw, "join", JOIN, where, faults)),
+        totals=MappingProxyType(_plain(raw, "totals", totals, where, faults)),
+    )
+    if faults:
+        raise RecipeError(faults)
+    return recipe
+
+
+def _list_of_tables(value):
+    return isinstance(value, list) and all(isinstance(item, dict) for item in value)
+
+
+def _step(table, chain, number, where, faults):
+    """A resolved step; None where the stage is unknown or a setting is wrong."""
+    here = f"{where}, [[{chain}]] step {number}"
+    name = table.get("stage")
+    stages = {key[1]: stage for key, stage in REGISTRY.items() if key[0] == chain}
+    if not isinstance(name, str) or name not in stages:
+        what = f"no stage {name!r}" if name is not None else "no 'stage' is named"
+        faults.append(Fault(here, what, nearest(str(name), stages)))
+        return None
+    stage = stages[name]
+    before = len(faults)
+    settings = stage.defaults()
+    for key, value in table.items():
+        if key == "stage":
+            continue
+        if key not in stage.settings:
+            faults.append(
+                Fault(
+                    here,
+                    f"stage {name!r} has no setting {key!r}",
+                    nearest(key, stage.settings) if stage.settings else "It has none.",
+                )
+            )
+            continue
+        value, problem = _fitting(value, stage.settings[key], stage.limits.get(key))
+        if problem:
+            faults.append(Fault(here, f"{name}: {key} = {value!r}", problem))
+        settings[key] = value
+    for key in stage.settings.keys() - settings.keys():
+        faults.append(
+            Fault(here, f"stage {name!r} needs the setting {key!r}", "It has no default: state it.")
+        )
+    return Step(stage, MappingProxyType(settings), number) if len(faults) == before else None
+
+
+def _fitting(value, parameter, limits):
+    """The value in the setting's own type, and what would be right where it does not fit."""
+    if get_origin(parameter.annotation) is Literal:
+        choices = get_args(parameter.annotation)
+        if value not in choices:
+            return value, f"It takes one of: {', '.join(map(str, choices))}."
+        return value, ""
+    default = parameter.default
+    kind = float if default is inspect.Parameter.empty else type(default)
+    return _number_fitting(value, kind, limits)
+
+
+def _number_fitting(value, kind, limits):
+    number = isinstance(value, int | float) and not isinstance(value, bool)
+    if kind is float and number:
+        value = float(value)
+    elif type(value) is not kind:
+        words = {float: "a number", int: "a whole number", bool: "true or false", str: "text"}
+        return value, f"It takes {words.get(kind, kind.__name__)}."
+    if limits and not limits[0] <= value <= limits[1]:
+        return value, f"It takes {limits[0]:g} to {limits[1]:g}."
+    return value, ""
+
+
+def _order_faults(steps, where):
+    """A stage twice, or one that stands before another it must follow."""
+    place = {}
+    for step in steps:
+        here = f"{where}, [[{step.stage.chain}]] step {step.number}"
+        if step.stage.name in place:
+            yield Fault(
+                here,
+                f"stage {step.stage.name!r} stands at step {place[step.stage.name]} already",
+                "A correction is applied once: remove one.",
+            )
+        place.setdefault(step.stage.name, step.number)
+    for step in steps:
+        for earlier in step.stage.after:
+            if place.get(earlier, 0) > step.number:
+                yield Fault(
+                    f"{where}, [[{step.stage.chain}]] step {step.number}",
+                    f"stage {step.stage.name!r} stands before {earlier!r} (step {place[earlier]})",
+                    f"{step.stage.name!r} works on what {earlier!r} has made: move it after.",
+                )
+
+
+def _plain(raw, part, known, where, faults):
+    """The settings of a part that is no stage."""
+    values = {key: default for key, (default, _, _) in known.items()}
+    table = raw.get(part, {})
+    if not isinstance(table, dict):
+        faults.append(Fault(f"{where}, [{part}]", "not a table", f"Write its keys under [{part}]."))
+        return values
+    for key, value in table.items():
+        if key not in known:
+            faults.append(
+                Fault(f"{where}, [{part}]", f"unknown setting {key!r}", nearest(key, known))
+            )
+            continue
+        value, problem = _number_fitting(value, type(values[key]), known[key][1:])
+        if problem:
+            faults.append(Fault(f"{where}, [{part}]", f"{key} = {value!r}", problem))
+        values[key] = value
+    return values
+
+
+# The stage modules are imported for what they register.
+_ = (sapflux.correction, sapflux.scaling)

@@ -1,0 +1,163 @@
+"""The commands as a person meets them: exit codes, what goes to stdout and what to stderr."""
+
+import json
+import subprocess
+import sys
+from pathlib import Path
+
+import pytest
+
+from sapflux.cli import main
+
+ROOT = Path(__file__).parents[2]
+SITE = str(ROOT / "configs" / "orvelin")
+
+
+@pytest.fixture(scope="module")
+def starter(tmp_path_factory):
+    folder = tmp_path_factory.mktemp("sites") / "mine"
+    assert main(["init", str(folder)]) == 0
+    return folder
+
+
+def broken(starter, tmp_path, name="broken"):
+    folder = tmp_path / name
+    folder.mkdir()
+    text = (starter / "site.toml").read_text(encoding="utf-8")
+    (folder / "site.toml").write_text(text.replace("latitude_deg", "latitude"), encoding="utf-8")
+    return folder
+
+
+def test_init_says_what_comes_next(tmp_path, capsys):
+    assert main(["init", str(tmp_path / "new")]) == 0
+    assert f"sapflux check {tmp_path / 'new'}" in capsys.readouterr().out
+
+
+def test_init_refuses_a_folder_with_files(starter, capsys):
+    assert main(["init", str(starter)]) == 2
+    assert str(starter) in capsys.readouterr().err
+
+
+def test_init_from_logger_files_drafts_their_columns(tmp_path, capsys):
+    files = sorted(str(path) for path in (Path(SITE) / "raw").glob("upper_2031-09-*.dat"))
+    assert main(["init", str(tmp_path / "new"), "--from", *files]) == 0
+    channels = (tmp_path / "new" / "channels.csv").read_text(encoding="utf-8")
+    assert "dT_P01" in channels and "mV" in channels
+
+
+def test_check_passes_the_demo_site(capsys):
+    assert main(["check", SITE]) == 0
+    assert "no fault. 20 probes, 20 trees, 2 stands, 5 logs, 21 files." in capsys.readouterr().out
+
+
+def test_check_lists_faults_on_stderr(starter, tmp_path, capsys):
+    folder = broken(starter, tmp_path)
+    assert main(["check", str(folder)]) == 2
+    told = capsys.readouterr()
+    assert "latitude" in told.err and "1 fault" not in told.out
+
+
+def test_check_prints_json_alone(starter, tmp_path, capsys):
+    folder = broken(starter, tmp_path)
+    assert main(["check", SITE, str(folder), "--json"]) == 2
+    told = json.loads(capsys.readouterr().out)
+    assert told[SITE]["faults"] == [] and told[str(folder)]["faults"]
+
+
+def test_check_names_a_column_no_file_has(tmp_path, capsys):
+    import shutil
+
+    folder = tmp_path / "orvelin"
+    shutil.copytree(SITE, folder)
+    table = folder / "channels.csv"
+    table.write_text(table.read_text().replace("upper,dT_P03", "upper,dT_PO3"), encoding="utf-8")
+    assert main(["check", str(folder)]) == 2
+    told = capsys.readouterr().err
+    assert (
+        f"{folder}/channels.csv, row 4: no file of log 'upper' has a column 'dT_PO3'. "
+        "Did you mean 'dT_P03'?"
+    ) in told
+
+
+def test_run_prints_totals_ledger_and_files(tmp_path, capsys):
+    assert main(["run", SITE, "--out", str(tmp_path)]) == 0
+    told = capsys.readouterr().out
+    for word in ["Season totals", "upper", "spruce", "kept", "duplicate", "daily.csv",
+                 "not of evapotranspiration"]:
+        assert word in told
+
+
+def test_a_failing_site_does_not_stop_the_others(starter, tmp_path, capsys):
+    folder = broken(starter, tmp_path)
+    code = main(["run", str(folder), SITE, "--out", str(tmp_path / "out")])
+    told = capsys.readouterr()
+    assert code == 3
+    assert "1 ok, 1 failed" in told.out
+    assert "latitude" in told.err
+    assert (tmp_path / "out" / "orvelin" / "season.csv").is_file()
+
+
+def test_all_sites_failing_by_configuration_is_a_usage_error(starter, tmp_path, capsys):
+    assert main(["run", str(broken(starter, tmp_path)), "--out", str(tmp_path / "out")]) == 2
+
+
+def test_two_jobs_give_the_same_bytes(tmp_path, capsys):
+    import shutil
+
+    twin = tmp_path / "twin"
+    shutil.copytree(SITE, twin)
+    assert main(["run", SITE, str(twin), "--out", str(tmp_path / "two"), "--jobs", "2"]) == 0
+    first, second = tmp_path / "two" / "orvelin", tmp_path / "two" / "twin"
+    assert (first / "daily.csv").read_bytes() == (second / "daily.csv").read_bytes()
+
+
+def test_dry_run_writes_nothing(tmp_path, capsys):
+    assert main(["run", SITE, "--out", str(tmp_path / "out"), "--dry-run"]) == 0
+    assert "Nothing was run." in capsys.readouterr().out
+    assert not (tmp_path / "out").exists()
+
+
+def test_run_of_a_plan_without_logs_says_so(tmp_path, capsys):
+    folder = tmp_path / "plan"
+    folder.mkdir()
+    text = (Path(SITE) / "site.toml").read_text(encoding="utf-8")
+    (folder / "site.toml").write_text(text.split("[layouts")[0], encoding="utf-8")
+    assert main(["check", str(folder)]) == 0
+    assert "a plan without logs" in capsys.readouterr().out
+    assert main(["run", str(folder), "--out", str(tmp_path / "out")]) == 1
+    assert "the site has no logs: it is a plan" in capsys.readouterr().err
+
+
+def test_an_unknown_recipe_is_a_usage_error(capsys):
+    assert main(["run", SITE, "--recipe", "stand_wateruse", "--dry-run"]) == 2
+    assert "Did you mean 'stand_water_use'?" in capsys.readouterr().err
+
+
+def test_stages_lists_and_explains(capsys):
+    assert main(["stages"]) == 0
+    assert "zero_flow_difference" in capsys.readouterr().out
+    assert main(["stages", "zero_flow_difference"]) == 0
+    told = capsys.readouterr().out
+    assert "highest_deficit_kPa" in told and "Source:" in told and "kPa" in told
+
+
+def test_stages_names_the_nearest_of_an_unknown_one(capsys):
+    assert main(["stages", "flow_indx"]) == 2
+    assert "Did you mean 'flow_index'?" in capsys.readouterr().err
+
+
+def test_help_imports_nothing_heavy():
+    code = (
+        "import sys, sapflux.cli\n"
+        "sapflux.cli.parser().format_help()\n"
+        "print([m for m in ('numpy', 'pandas', 'xarray', 'dask') if m in sys.modules])"
+    )
+    told = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, cwd=ROOT)
+    assert told.stdout.strip() == "[]"
+
+
+def test_the_module_runs_like_the_command():
+    told = subprocess.run(
+        [sys.executable, "-m", "sapflux", "--version"], capture_output=True, text=True, cwd=ROOT
+    )
+    assert told.stdout.startswith("sapflux 0.")
