@@ -43,7 +43,7 @@ ROWS = [
     Flag("beyond_calibration", 15, False, "outside the range of the calibration"),
     Flag("partly_missing", 16, False, "part of the step is missing"),
     Flag("incomplete_step", 17, True, "too little of the step is measured"),
-    Flag("incomplete_radius", 18, True, "a point along the needle is missing"),
+    Flag("incomplete_radius", 18, True, "part of the sapwood has no value"),
     Flag("few_trees", 19, True, "fewer live trees than a stratum needs"),
     Flag("borrowed", 20, False, "flux density of a stand-in"),
     Flag("no_wound_width", 21, True, "no wound width, or one that the correction does not cover"),

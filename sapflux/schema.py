@@ -132,6 +132,7 @@ ROWS = [
     Variable("in_leaf", ("stand_species", "time"), "1", "1 while the species is in leaf, else 0"),
     Variable("stand_transpiration", ("stand_species", "time"), "kg m-2 s-1",
              "transpiration per ground area", "transpiration_flux"),
+    Variable("stand_origin", ("stand_species", "time"), "1", "how the transpiration came to be"),
     # Facts laid on the records or constant for a probe
     Variable("installation", PROBE, "1", "number of the installation, -1 outside"),
     Variable("radial_from", ("probe", "point"), "m", "depth below cambium where the point begins"),

@@ -9,6 +9,7 @@ import shutil
 import tomllib
 from pathlib import Path
 
+import numpy as np
 import pandas as pd
 import pytest
 
@@ -81,8 +82,11 @@ def test_every_line_of_every_file_is_accounted_for(run):
 
 def test_the_power_loss_gives_no_flux(run):
     probes = run.probes
-    lost = probes["flux_density"].sel(probe="P01", point=1).sel(
-        time=slice("2031-09-12T14:00", "2031-09-13T07:00"))
+    lost = (
+        probes["flux_density"]
+        .sel(probe="P01", point=1)
+        .sel(time=slice("2031-09-12T14:00", "2031-09-13T07:00"))
+    )
     assert lost.isnull().all()
 
 
@@ -145,3 +149,29 @@ def test_a_kept_sample_is_found_again_in_the_line_it_came_from(run):
     line = (SITE / file).read_text("latin-1").splitlines()[int(origin["line"][at]) - 1]
     local = pd.Timestamp(origin["time"].values[at]) + pd.Timedelta(hours=1)
     assert line.startswith(f'"{local:%Y-%m-%d %H:%M:%S}"')
+
+
+def test_the_stand_file_holds_the_stand_itself(run):
+    stand = run.stand["stand_transpiration"]
+    names = [str(name) for name in run.stand["stand_species"].values]
+    whole = stand[names.index("upper/all")]
+    parts = stand[[names.index(name) for name in names if name.startswith("upper/")][:-1]]
+    np.testing.assert_allclose(whole, parts.sum("stand_species", skipna=False), rtol=1e-12)
+
+
+def test_every_netcdf_file_passes_the_convention_checker(tmp_path):
+    # compliance-checker, CF-1.11, with the standard name table it carries
+    from compliance_checker.runner import CheckSuite, ComplianceChecker
+
+    run = run_site(SITE, out=tmp_path, native=True)
+    files = sorted(run.folder.glob("*.nc"))
+    assert [path.stem for path in files] == [
+        "heat_dissipation", "heat_ratio", "origin", "probes", "stand", "trees",
+    ]  # fmt: skip
+    CheckSuite.load_all_available_checkers()
+    for path in files:
+        report = tmp_path / "report.txt"
+        passed, errors = ComplianceChecker.run_checker(
+            str(path), ["cf:1.11"], 0, "strict", output_filename=str(report)
+        )
+        assert passed and not errors, report.read_text()

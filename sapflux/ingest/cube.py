@@ -4,6 +4,7 @@ import numpy as np
 import xarray as xr
 
 from sapflux import quality, schema
+from sapflux.errors import DataError, Fault
 from sapflux.ingest.channels import single_series, values_of
 from sapflux.ingest.series import grid, on_records, place
 
@@ -17,9 +18,11 @@ def measured_cubes(site, logs):
     logs : name -> log series as `read_log` gives them.
     Each cube is a Dataset with dims (probe, point, time), its signals in SI as measured, and
     `quality`; `interval_s` is in its attributes. Probes without any record are left in, so that
-    they are counted.
+    they are counted. DataError for logs whose records do not end on whole intervals of the
+    site's standard time.
     """
     groups = {}
+    _check_phase(site, logs)
     for channel in site.table("channels"):
         if channel.kind != "probe" or channel.log not in logs:
             continue
@@ -28,6 +31,28 @@ def measured_cubes(site, logs):
             key = (method, logs[channel.log].interval_s)
             groups.setdefault(key, []).append(channel)
     return {key: _cube(site, logs, key, channels) for key, channels in sorted(groups.items())}
+
+
+def _check_phase(site, logs):
+    """Records of one interval share a grid, or they could not be laid side by side."""
+    carried = {c.log for c in site.table("channels") if c.kind == "probe"}
+    faults = []
+    for name in sorted(carried & logs.keys()):
+        series = logs[name]
+        standard = site.standard(series.end[:1])
+        since_midnight = standard - standard.astype("datetime64[D]")
+        off = (since_midnight % np.timedelta64(series.interval_s, "s")).astype(np.int64)
+        if off.any():
+            faults.append(
+                Fault(
+                    f"{site.folder}/site.toml, [logs.{name}]",
+                    f"its records end {off[0] / 60:g} min after whole intervals of the site's "
+                    f"standard time (utc_offset_h {site.position.utc_offset_h:g})",
+                    "Let utc_offset_h and the log's clock differ by whole intervals.",
+                )
+            )
+    if faults:
+        raise DataError(faults)
 
 
 def probe_names(site, method):

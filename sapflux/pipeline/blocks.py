@@ -5,7 +5,7 @@ from itertools import pairwise
 
 import numpy as np
 
-DAY = np.timedelta64(86400, "s")
+NO_OFFSET = np.timedelta64(0, "s")
 
 
 @dataclass(frozen=True)
@@ -28,11 +28,11 @@ class Block:
         return slice(self.first, self.last)
 
 
-def blocks(time, interval_s, reach_s=0.0, days=12):
-    """Blocks that cover `time`, cut at UTC midnights.
+def blocks(time, interval_s, reach_s=0.0, days=12, offset=NO_OFFSET):
+    """Blocks that cover `time`, cut at midnights of the site's fixed standard time.
 
     time : (time) datetime64[s] regular ends of interval [UTC]; reach_s : halo on each side [s];
-    days : length of a core [d], or None for one block.
+    days : length of a core [d], or None for one block; offset : fixed standard time minus UTC.
     A cut lies between records so that a record ending at midnight belongs to the day before.
 
     >>> hours = np.datetime64("2031-06-01T01", "s") + np.arange(48) * np.timedelta64(3600, "s")
@@ -45,7 +45,7 @@ def blocks(time, interval_s, reach_s=0.0, days=12):
     halo = int(-(-reach_s // interval_s))
     if days is None:
         return [Block(0, count, 0, count)]
-    day = (time - np.timedelta64(1, "s")).astype("datetime64[D]").astype(np.int64)
+    day = (time + offset - np.timedelta64(1, "s")).astype("datetime64[D]").astype(np.int64)
     group = (day - day[0]) // days
     cuts = [0, *(np.flatnonzero(np.diff(group)) + 1).tolist(), count]
     return [

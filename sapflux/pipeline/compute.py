@@ -18,6 +18,7 @@ from sapflux.pipeline.execute import BLOCK_DAYS, Chain, fitted_tables, run_block
 from sapflux.pipeline.installations import FlagCounts, installation_table
 from sapflux.pipeline.join import Joined, common_grid
 from sapflux.pipeline.totals import total_tables
+from sapflux.scaling.whole_stands import with_whole_stands
 from sapflux.site import facts
 
 
@@ -50,7 +51,7 @@ def compute(site, recipe, *, native=False, block_days=BLOCK_DAYS):
     weather = weather_series(site, logs)
     stopwatch.lap("assemble")
     step_s = site.position.common_step_min * 60
-    ends = common_grid(cubes.values(), step_s)
+    ends = common_grid(cubes.values(), step_s, site.offset)
     if not len(ends):
         raise DataError(
             Fault(
@@ -60,13 +61,15 @@ def compute(site, recipe, *, native=False, block_days=BLOCK_DAYS):
             )
         )
     joined = Joined(list(cubes.values()), ends, step_s, recipe.join["least_coverage"])
-    counts, first = FlagCounts(), 0
+    counts = FlagCounts()
     for (method, interval_s), cube in cubes.items():
         chain = Chain(
-            _labelled(site, cube), recipe.chains[method], probe_chain_beside(site, cube, weather)
+            _labelled(site, cube),
+            recipe.chains[method],
+            probe_chain_beside(site, cube, weather),
+            offset=site.offset,
         )
-        _run_method(chain, joined, first, found, counts, method, native, block_days)
-        first += cube.sizes["probe"]
+        _run_method(chain, joined, found, counts, method, native, block_days)
         found.history += [f"{step.line()} at {interval_s} s" for step in chain.steps]
     stopwatch.lap("correct")
     found.probes = _labelled(site, joined.dataset())
@@ -75,6 +78,9 @@ def compute(site, recipe, *, native=False, block_days=BLOCK_DAYS):
     stopwatch.lap("scale")
     found.tables["installations"] = installation_table(site, counts, found.evidence)
     found.tables |= total_tables(site, recipe, found, weather)
+    if found.stand is not None:
+        ground = facts.stand_facts(site, ends[:1])["sapwood_per_ground"].values
+        found.stand = with_whole_stands(found.stand, ground)
     stopwatch.lap("total")
     found.seconds = stopwatch.seconds
     return found
@@ -101,7 +107,7 @@ def _labelled(site, cube):
     return cube.assign_coords(coords)
 
 
-def _run_method(chain, joined, first, found, counts, method, native, block_days):
+def _run_method(chain, joined, found, counts, method, native, block_days):
     tables = fitted_tables(chain, block_days)
     for name, rows in tables.items():
         known = found.evidence.get(name)
@@ -113,7 +119,9 @@ def _run_method(chain, joined, first, found, counts, method, native, block_days)
         flux = working.variables["flux_density"].isel(core).transpose(*schema.RECORD)
         bits = working.quality[schema.RECORD].isel(core).transpose(*schema.RECORD)
         record_ends = chain.ends[block.whole][block.core]
-        joined.add(first, flux.values, bits.values, record_ends, chain.interval_s)
+        joined.add(
+            chain.cube["probe"].values, flux.values, bits.values, record_ends, chain.interval_s
+        )
         counts.add(chain.cube, working.variables["installation"].isel(core).values, bits.values)
         if native:
             kept.append(_native_part(working, bits, core))
@@ -147,6 +155,7 @@ def _scale(site, recipe, found, weather, block_days):
         steps,
         scaling_beside(site, found.probes, weather),
         spread_flags=False,
+        offset=site.offset,
     )
     tables = fitted_tables(chain, block_days)
     found.evidence |= tables

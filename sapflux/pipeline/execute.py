@@ -12,7 +12,7 @@ import pandas as pd
 import xarray as xr
 
 from sapflux import quality, schema
-from sapflux.pipeline.blocks import blocks, span
+from sapflux.pipeline.blocks import NO_OFFSET, blocks, span
 from sapflux.stage import bind
 
 BLOCK_DAYS = 12
@@ -33,6 +33,7 @@ class Chain:
     steps: tuple
     beside: object
     spread_flags: bool = True
+    offset: np.timedelta64 = NO_OFFSET  # fixed standard time minus UTC
 
     @property
     def interval_s(self):
@@ -50,6 +51,7 @@ class Working:
     """The variables of one block while the stages run over it."""
 
     variables: dict
+    maskable: set  # names of what was measured or made; facts and weather are never masked
     quality: dict = field(default_factory=dict)  # dims -> int32 DataArray
 
 
@@ -61,9 +63,7 @@ def fitted_tables(chain, block_days=BLOCK_DAYS):
             continue
         rows = [
             _summary(chain, step, index, block, tables)
-            for block in blocks(
-                chain.ends, chain.interval_s, _reach(chain.steps[: index + 1]), block_days
-            )
+            for block in _blocks(chain, chain.steps[: index + 1], block_days)
         ]
         tables[step.stage.table] = _fit(step, [part for part in rows if len(part)] or rows)
     return tables
@@ -74,9 +74,12 @@ def run_blocks(chain, tables, block_days=BLOCK_DAYS, also=()):
 
     also : names beside those the stages read that the working set must hold.
     """
-    reach = _reach(chain.steps)
-    for block in blocks(chain.ends, chain.interval_s, reach, block_days):
+    for block in _blocks(chain, chain.steps, block_days):
         yield block, _run(chain, chain.steps, block, tables, also)
+
+
+def _blocks(chain, steps, block_days):
+    return blocks(chain.ends, chain.interval_s, _reach(steps), block_days, chain.offset)
 
 
 def _reach(steps):
@@ -111,10 +114,9 @@ def _run(chain, steps, block, tables, also=()):
     """The working set of a block after `steps`."""
     part = chain.cube.isel(time=block.whole)
     wanted = {name for step in steps for name in step.stage.reads} | set(also)
-    variables = {name: part[name] for name in part.data_vars if name != "quality"}
-    variables |= chain.beside(chain.ends[block.whole], wanted)
-    variables |= tables
-    working = Working(variables)
+    measured = {name: part[name] for name in part.data_vars if name != "quality"}
+    beside = chain.beside(chain.ends[block.whole], wanted)
+    working = Working({**beside, **measured, **tables}, set(measured))
     if "quality" in part:
         _add_flags(working, part["quality"])
     for step in steps:
@@ -135,6 +137,7 @@ def _apply(step, working, spread_flags):
             made = result[name]
             made.attrs = schema.VARIABLES[name].attributes()  # replaced whole, never merged
             working.variables[name] = made
+            working.maskable.add(name)
     flagged = {name: result[name] for name in stage.flags if name in result}
     for name, where in flagged.items():
         bits = xr.where(where, np.int32(quality.FLAGS[name].mask), np.int32(0))
@@ -153,7 +156,7 @@ def _add_flags(working, bits):
     masked = quality.masked(bits.values)
     if not masked.any():
         return
-    for name, variable in working.variables.items():
-        array = isinstance(variable, xr.DataArray)
-        if array and variable.dims == dims and variable.dtype.kind == "f":
+    for name in working.maskable:
+        variable = working.variables[name]
+        if variable.dims == dims and variable.dtype.kind == "f":
             working.variables[name] = variable.where(~masked)

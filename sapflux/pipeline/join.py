@@ -5,10 +5,14 @@ import xarray as xr
 
 from sapflux import quality, schema
 from sapflux.ingest.series import grid
+from sapflux.pipeline.blocks import NO_OFFSET
 
 
-def common_grid(cubes, step_s):
-    """Ends of the common steps that cover all cubes, datetime64[s]."""
+def common_grid(cubes, step_s, offset=NO_OFFSET):
+    """Ends of the common steps that cover all cubes, datetime64[s] UTC.
+
+    Steps count from midnight of the fixed standard time, which is UTC plus `offset`.
+    """
     step = np.timedelta64(step_s, "s")
     firsts, lasts = [], []
     for cube in cubes:
@@ -18,7 +22,7 @@ def common_grid(cubes, step_s):
             lasts.append(ends[-1])
     if not firsts:
         return np.empty(0, dtype="datetime64[s]")
-    midnight = min(firsts).astype("datetime64[D]").astype("datetime64[s]")
+    midnight = (min(firsts) + offset).astype("datetime64[D]").astype("datetime64[s]") - offset
     first = midnight + ((min(firsts) - midnight) // step + 1) * step
     last = midnight + -(-(max(lasts) - midnight) // step) * step
     return grid(first, last, step_s)
@@ -33,7 +37,8 @@ class Joined:
     """
 
     def __init__(self, cubes, ends, step_s, least_coverage):
-        probes = [str(name) for cube in cubes for name in cube["probe"].values]
+        # A probe that moved to a logger of another interval lies in two cubes, and is one probe.
+        probes = list(dict.fromkeys(str(n) for cube in cubes for n in cube["probe"].values))
         points = max((cube.sizes["point"] for cube in cubes), default=1)
         shape = (len(probes), points, len(ends))
         self.probes, self.ends, self.step_s = probes, ends, step_s
@@ -42,8 +47,11 @@ class Joined:
         self.quality = np.full(shape, quality.FLAGS["no_record"].mask, dtype=np.int32)
         self.coverage = np.zeros(shape, dtype=np.float32)
 
-    def add(self, first_probe, flux, bits, record_ends, interval_s):
-        """Lay the core of one block of one cube: arrays (probe, point, time)."""
+    def add(self, probes, flux, bits, record_ends, interval_s):
+        """Lay the core of one block of one cube: names of its probes, (probe, point, time).
+
+        Steps that another cube has filled are left alone where this one has no record.
+        """
         per_step = self.step_s // interval_s
         step = np.timedelta64(self.step_s, "s")
         start = self.ends[0] - step
@@ -64,11 +72,15 @@ class Joined:
         joined = np.bitwise_or.reduce(flags, axis=-1) | quality.bits(
             partly_missing=(count > 0) & (count < per_step), incomplete_step=~enough
         )
-        probes = slice(first_probe, first_probe + flux.shape[0])
-        points = slice(0, flux.shape[1])
-        self.flux[probes, points, low:high] = np.where(enough, mean, np.nan)
-        self.quality[probes, points, low:high] = joined
-        self.coverage[probes, points, low:high] = share
+        rows = [self.probes.index(str(name)) for name in probes]
+        here = np.ix_(rows, range(flux.shape[1]), range(low, high))
+        take = (count > 0) | (self.coverage[here] == 0)
+        for laid, new in [
+            (self.flux, np.where(enough, mean, np.nan)),
+            (self.quality, joined),
+            (self.coverage, share),
+        ]:
+            laid[here] = np.where(take, new, laid[here])
 
     def dataset(self):
         """The joined cube."""

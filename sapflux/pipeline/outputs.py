@@ -56,9 +56,7 @@ def table_hashes(site):
 
 def run_identity(site, recipe, found):
     """The identity of the run: inputs, tables, resolved recipe and version."""
-    return identity(
-        input_hashes(found), table_hashes(site), recipe.resolved(), sapflux.__version__
-    )
+    return identity(input_hashes(found), table_hashes(site), recipe.resolved(), sapflux.__version__)
 
 
 def write_run(folder, site, recipe, found, identity_of_run):

@@ -8,6 +8,8 @@ from zoneinfo import available_timezones
 
 from pydantic import BaseModel, ConfigDict, Field, field_validator, model_validator
 
+from sapflux.site.cells import month_day
+
 
 class Strict(BaseModel):
     """Unknown keys and wrong types are faults; objects do not change once made."""
@@ -50,22 +52,6 @@ class Position(Strict):
                 "Give minutes that do: 1, 2, 3, 4, 5, 6, 10, 12, 15, 20, 30 or 60.",
             )
         return value
-
-
-def month_day(value):
-    """A month and day that every year has. ValueError (what, remedy) otherwise.
-
-    >>> month_day("10-01")
-    '10-01'
-    """
-    month, day = map(int, value.split("-"))
-    if not (
-        1 <= month <= 12 and 1 <= day <= (31, 28, 31, 30, 31, 30, 31, 31, 30, 31, 30, 31)[month - 1]
-    ):
-        raise ValueError(
-            f"{value!r} is not a day of every year", "Write month and day, like '10-01'."
-        )
-    return value
 
 
 class LongTable(Strict):

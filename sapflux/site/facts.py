@@ -113,7 +113,7 @@ def stand_facts(site, times_end):
     known = {row.species: row for row in site.table("species")}
     rows = [known.get(species) for _, species in areas]
     days = month_days(site.standard(ends - np.timedelta64(1, "ns")))
-    leaf = np.ones((len(rows), len(ends)))
+    leaf = np.ones((len(rows), len(ends)), dtype=np.int8)
     for place, row in enumerate(rows):
         if row is not None and row.leaf_on and row.leaf_off:
             leaf[place] = _in_season(days, _number_of(row.leaf_on), _number_of(row.leaf_off))

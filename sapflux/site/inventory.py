@@ -75,6 +75,7 @@ def species_row(site, species):
 def latest_survey(site, tree):
     """The latest row of `surveys.csv` of the stem that is named as the tree, or None.
 
+    A tree outside all plots is its own row of `trees.csv`, if that gives a diameter.
     Stem names may recur from stand to stand: only plots of the tree's stand are looked at.
     """
     known = tree_row(site, tree)
@@ -84,7 +85,8 @@ def latest_survey(site, tree):
         for row in site.table("surveys")
         if row.stem == tree and (not known or row.plot in plots)
     ]
-    return max(rows, key=lambda row: row.date, default=None)
+    outside = known if known is not None and known.diameter_cm is not None else None
+    return max(rows, key=lambda row: row.date, default=outside)
 
 
 def core_rows(site, tree):

@@ -4,7 +4,7 @@ Times are the site's fixed standard time; intervals are half-open [from, to), a 
 Units stand in the column names. A blank cell takes the field's default.
 """
 
-from typing import Annotated, Literal
+from typing import Annotated, ClassVar, Literal
 
 from pydantic import BaseModel, ConfigDict, Field
 
@@ -77,13 +77,18 @@ class Probe(Row):
 
 
 class Tree(Row):
-    """A tree that carries instruments. Its diameter stands in `surveys` under the same name."""
+    """A tree that carries instruments.
+
+    Its diameter stands in `surveys` under the same name, or here if it stands outside all plots.
+    """
 
     tree: Name
     stand: Name
     species: Name
     height_m: Positive | None = None
     bark_mm: NotNegative | None = None
+    diameter_cm: Positive | None = None  # over bark; the survey's goes before it
+    under_bark: ClassVar[bool] = False
 
 
 class Core(Row):

@@ -82,8 +82,15 @@ def test_check_names_a_column_no_file_has(tmp_path, capsys):
 def test_run_prints_totals_ledger_and_files(tmp_path, capsys):
     assert main(["run", SITE, "--out", str(tmp_path)]) == 0
     told = capsys.readouterr().out
-    for word in ["Season totals", "upper", "spruce", "kept", "duplicate", "daily.csv",
-                 "not of evapotranspiration"]:
+    for word in [
+        "Season totals",
+        "upper",
+        "spruce",
+        "kept",
+        "duplicate",
+        "daily.csv",
+        "not of evapotranspiration",
+    ]:
         assert word in told
 
 

@@ -134,3 +134,14 @@ def test_a_stage_that_returns_what_it_did_not_declare_is_a_defect():
 
     with pytest.raises(TypeError, match="returned what it did not declare"):
         list(run_blocks(chain([step(undeclared)]), {}, None))
+
+
+def test_facts_are_never_masked():
+    def fact_of_block(ends, wanted):
+        size = (2, 1, len(ends))
+        return {"installation": xr.DataArray(np.ones(size), dims=schema.RECORD)}
+
+    one = chain([step(below, flags=("heater_failure",))])
+    one = Chain(one.cube, one.steps, fact_of_block)
+    ((_, working),) = run_blocks(one, {}, None)
+    assert (working.variables["installation"] == 1).all()

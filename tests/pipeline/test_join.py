@@ -24,7 +24,7 @@ def joined(values, flags=None, first_end="2031-06-01T00:10", least=0.6):
     ends = one["time"].values.astype("datetime64[s]")
     result = Joined([one], common_grid([one], 1800), 1800, least)
     bits = np.zeros(len(values), np.int32) if flags is None else np.array(flags, np.int32)
-    result.add(0, np.array(values, float)[None, None], bits[None, None], ends, 600)
+    result.add(["T01"], np.array(values, float)[None, None], bits[None, None], ends, 600)
     return result.dataset()
 
 
@@ -60,3 +60,24 @@ def test_two_clocks_share_one_grid():
     result = Joined([slow, fast], ends, 1800, 0.75).dataset()
     assert list(result["probe"].values) == ["T01", "T02"]
     assert (result["origin"] == quality.ORIGINS["absent"]).all()
+
+
+def test_a_probe_that_moved_to_a_slower_logger_stays_one_probe():
+    fast, slow = cube("2031-06-01T00:10", 6, 600), cube("2031-06-01T01:30", 2, 1800)
+    result = Joined([fast, slow], common_grid([fast, slow], 1800), 1800, 0.6)
+    # The fast logger gives the first hour, the slow one the second; each is silent in the other's.
+    for one, values in [(fast, [1, 1, 1, 2, 2, 2]), (slow, [3, 4])]:
+        ends = one["time"].values.astype("datetime64[s]")
+        flux = np.array(values, float)[None, None]
+        bits = np.zeros(flux.shape, np.int32)
+        result.add(["T01"], flux, bits, ends, int(one.attrs["interval_s"]))
+    silent = np.full((1, 1, 2), NAN), np.full((1, 1, 2), NO_RECORD, np.int32)
+    early = np.array(["2031-06-01T00:30", "2031-06-01T01:00"], "M8[s]")
+    result.add(["T01"], *silent, early, 1800)
+    assert result.dataset()["flux_density"].values.tolist() == [[[1, 2, 3, 4]]]
+
+
+def test_steps_count_from_midnight_of_the_standard_time():
+    one = cube("2031-06-01T00:30", 4, 3600)
+    ends = common_grid([one], 3600, np.timedelta64(19800, "s"))  # utc+5.5
+    assert [str(end)[11:16] for end in ends] == ["00:30", "01:30", "02:30", "03:30"]

@@ -70,8 +70,10 @@ def test_a_missing_table_is_named():
 
 def test_a_missing_survey_is_named():
     found = faults(without(SITE, "surveys"))
-    assert any("needs sapwood_per_ground" in fault and "surveys.csv and plots.csv" in fault
-               for fault in found)
+    assert any(
+        "needs sapwood_per_ground" in fault and "surveys.csv and plots.csv" in fault
+        for fault in found
+    )
 
 
 def test_a_missing_stage_is_named():

@@ -107,7 +107,7 @@ def test_an_order_that_makes_no_sense():
 
 
 def test_an_unknown_part():
-    (fault,) = faults(HEAD + '[jion]\nleast_coverage = 1\n')
+    (fault,) = faults(HEAD + "[jion]\nleast_coverage = 1\n")
     assert fault == (
         "oak.toml: unknown part 'jion'. Did you mean 'join'? Known: heat_dissipation, heat_ratio, "
         "join, scaling, title, totals."

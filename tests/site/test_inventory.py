@@ -239,3 +239,16 @@ def test_a_plot_without_area_is_refused():
         "configs/ridge/plots.csv: plot 'P2' has no ground area. "
         "Give plan_area_m2, or slope_area_m2 and slope_deg."
     )
+
+
+def test_a_tree_outside_all_plots_has_its_own_diameter():
+    trees = "tree,stand,species,bark_mm,diameter_cm\nT1,upper,oak,10,30"
+    site = site_by_hand(trees=trees, species=OAK_AREA)
+    assert inventory.xylem_radius(site, "T1") == pytest.approx(0.14)
+    # 0.5 * 30^2 = 450 cm2
+    assert inventory.tree_sapwood_area(site, "T1") == pytest.approx(0.045)
+
+
+def test_the_survey_goes_before_the_trees_own_diameter():
+    trees = "tree,stand,species,bark_mm,diameter_cm\nT1,upper,oak,10,40"
+    assert inventory.xylem_radius(stem_of(trees=trees), "T1") == pytest.approx(0.14)

@@ -1,6 +1,0 @@
-"""Lets the tests of this folder import their shared helper, `site_by_hand`."""
-
-import sys
-from pathlib import Path
-
-sys.path.insert(0, str(Path(__file__).parent))

@@ -1,0 +1,46 @@
+"""Units of columns against udunits, the reference library of the CF conventions."""
+
+import re
+
+import cf_units
+import pytest
+
+from sapflux import schema, units
+
+SPELLED = {"%": "percent", "mm water": "kg m-2", "uV": "microvolt", "um": "micrometer"}
+
+
+@pytest.mark.parametrize("written", units.UNITS)
+def test_every_unit_converts_as_udunits_does(written):
+    si, _, _ = units.UNITS[written]
+    source = cf_units.Unit(SPELLED.get(written, written))
+    for value in (0.0, 1.0, 37.5):
+        expected = source.convert(value, cf_units.Unit(si))
+        assert units.to_si(value, written) == pytest.approx(expected, rel=1e-12, abs=1e-12)
+
+
+@pytest.mark.parametrize("name", schema.VARIABLES)
+def test_units_of_the_schema_are_udunits(name):
+    cf_units.Unit(schema.VARIABLES[name].units)
+
+
+def test_trade_units_by_hand():
+    # udunits 2: 1 cm3 cm-2 h-1 is 1 cm h-1 = 2.7777778e-6 m s-1; 1e-5 m s-1 is 3.6 cm h-1
+    assert units.to_si(1.0, "cm h-1") == pytest.approx(2.7777778e-6, rel=1e-8)
+    assert units.to_si(3.6, "cm h-1") == pytest.approx(1e-5, rel=1e-12)
+
+
+def test_a_temperature_difference_takes_no_offset():
+    assert units.to_si(10.0, "degF", difference=True) == pytest.approx(50 / 9)
+    assert units.to_si(10.0, "degC", difference=True) == 10.0
+
+
+def test_every_quantity_can_be_written_in_some_unit_and_has_a_range():
+    for name, row in schema.QUANTITIES.items():
+        assert units.accepted(row.units), name
+        assert row.low < row.high, name
+
+
+def test_names_of_flags_and_variables_are_words():
+    for name in schema.VARIABLES:
+        assert re.fullmatch(r"[a-z][a-z_0-9]*", name)
