@@ -91,8 +91,8 @@ FILES = {
     ),
     "unknown column": (
         TREES.replace("bark_mm", "bark_cm").encode(),
-        "ridge/trees.csv, row 1: unknown column 'bark_cm'. Did you mean 'bark_mm'? Known: bark_mm, diameter_cm, "
-        "height_m, species, stand, tree.",
+        "ridge/trees.csv, row 1: unknown column 'bark_cm'. Did you mean 'bark_mm'? Known: bark_mm, "
+        "diameter_cm, height_m, species, stand, tree.",
     ),
     "column twice": (
         TREES.replace("species,bark_mm", "species,stand").replace(",10", ",").encode(),
