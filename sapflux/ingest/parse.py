@@ -257,7 +257,7 @@ def _numbers(cells, segment, layout):
         elif cell and not number.fullmatch(cell):
             return f"column '{segment.names[at]}': '{shown(cell)}' is not a number", None
         elif cell and not np.isfinite(float(cell.replace(layout.decimal, "."))):
-            return f"column '{segment.names[at]}': '{shown(cell)}' is too large a number", None
+            cell = ""  # beyond what a number can hold, like INF
         row.append(cell)
     return "", row
 

@@ -17,6 +17,9 @@ from sapflux.pipeline.recipe import load_recipe
 from sapflux.pipeline.staging import publish
 from sapflux.site.load import load_site
 
+# Columns of text that may be blank throughout: blank is "", never a missing number.
+TEXTS = ("reason", "text", "removed", "ended", "verdict", "stand", "species", "tree")
+
 
 @dataclass(frozen=True)
 class Run:
@@ -26,7 +29,9 @@ class Run:
 
     def table(self, name):
         """A table of the run as a DataFrame, for example `table("daily")`."""
-        return pd.read_csv(self.folder / f"{name}.csv")
+        frame = pd.read_csv(self.folder / f"{name}.csv", dtype=dict.fromkeys(TEXTS, str))
+        texts = [column for column in TEXTS if column in frame]
+        return frame.fillna(dict.fromkeys(texts, ""))
 
     def dataset(self, name):
         """A netCDF file of the run, opened lazily: "probes", "trees", "stand", "origin", ..."""
@@ -93,7 +98,6 @@ def summary(run):
     ledger = run.table("ledger")
     classes = ledger.drop(columns=["file", "sha256"]).sum()
     daily = run.table("daily")
-    season["reason"] = season["reason"].fillna("")
     return {
         "site": run.record["site"]["name"],
         "recipe": run.record["recipe"]["name"],

@@ -64,7 +64,7 @@ def compute(site, recipe, *, native=False, block_days=BLOCK_DAYS):
     counts = FlagCounts()
     for (method, interval_s), cube in cubes.items():
         chain = Chain(
-            _labelled(site, cube),
+            cube,
             recipe.chains[method],
             probe_chain_beside(site, cube, weather),
             offset=site.offset,

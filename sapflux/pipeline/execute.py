@@ -15,7 +15,7 @@ from sapflux import quality, schema
 from sapflux.pipeline.blocks import NO_OFFSET, blocks, span
 from sapflux.stage import bind
 
-BLOCK_DAYS = 12
+BLOCK_DAYS = 60  # long enough that labels cost little beside arithmetic, short enough for memory
 
 
 @dataclass(frozen=True)
@@ -138,25 +138,33 @@ def _apply(step, working, spread_flags):
             made.attrs = schema.VARIABLES[name].attributes()  # replaced whole, never merged
             working.variables[name] = made
             working.maskable.add(name)
-    flagged = {name: result[name] for name in stage.flags if name in result}
-    for name, where in flagged.items():
-        bits = xr.where(where, np.int32(quality.FLAGS[name].mask), np.int32(0))
-        record = working.quality.get(schema.RECORD)
-        if spread_flags and record is not None and bits.dims != schema.RECORD:
-            bits = bits.broadcast_like(record).transpose(*schema.RECORD)
-        _add_flags(working, bits)
+    for name in stage.flags:
+        if name in result:
+            _add_flags(working, _bits(result[name], name, working, spread_flags))
+
+
+def _bits(where, name, working, spread_flags):
+    """Flag bits from where a flag is set, spread over all points where the chain wants it."""
+    record = working.quality.get(schema.RECORD)
+    if spread_flags and record is not None and where.dims != schema.RECORD:
+        where = where.broadcast_like(record).transpose(*schema.RECORD)
+    mask = np.int32(quality.FLAGS[name].mask)
+    return where.copy(data=np.where(where.values, mask, np.int32(0)))
 
 
 def _add_flags(working, bits):
     """Keep the bits, and take masked records from the working variables of the same dims."""
     dims = bits.dims
-    known = working.quality.get(dims)
-    bits = bits.astype(np.int32)
-    working.quality[dims] = bits if known is None else known | bits
+    if dims in working.quality:
+        known = working.quality[dims]
+        working.quality[dims] = known.copy(data=known.values | bits.values)
+    else:
+        working.quality[dims] = bits
     masked = quality.masked(bits.values)
     if not masked.any():
         return
     for name in working.maskable:
         variable = working.variables[name]
         if variable.dims == dims and variable.dtype.kind == "f":
-            working.variables[name] = variable.where(~masked)
+            values = np.where(masked, np.nan, variable.values)
+            working.variables[name] = variable.copy(data=values)

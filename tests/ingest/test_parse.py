@@ -36,8 +36,10 @@ def test_an_unreadable_number_rejects_its_line_with_column_and_text(text):
     assert column(series) == [1, 3]
 
 
-def test_a_number_beyond_float64_rejects_its_line():
-    assert reasons(read(rows("1e999"))) == [(2, "column 'A': '1e999' is too large a number")]
+def test_a_number_beyond_float64_is_missing_like_inf():
+    series = read(rows("1e999", "INF", "3"))
+    assert reasons(series) == []
+    assert column(series) == [None, None, 3]
 
 
 def test_control_characters_in_a_reason_are_escaped_and_long_text_is_cut():
