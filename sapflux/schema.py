@@ -190,4 +190,4 @@ SIGNALS = {
         "logged_velocity",
     ),
 }
-CF_VERSION = "CF-1.11, ACDD-1.3"
+CONVENTIONS = "CF-1.11, ACDD-1.3"

@@ -13,7 +13,7 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from sapflux import run_site
+from sapflux import quality, run_site
 
 ROOT = Path(__file__).parents[1]
 SITE = ROOT / "configs" / "orvelin"
@@ -88,6 +88,13 @@ def test_the_power_loss_gives_no_flux(run):
         .sel(time=slice("2031-09-12T14:00", "2031-09-13T07:00"))
     )
     assert lost.isnull().all()
+    bits = (
+        probes["quality"]
+        .sel(probe="P01", point=1)
+        .sel(time=slice("2031-09-12T14:00", "2031-09-13T07:00"))
+    )
+    told = quality.has(bits.values, "heater_failure") | quality.has(bits.values, "heater_recovery")
+    assert told.all()
 
 
 def test_refused_periods_say_why(run):
@@ -175,3 +182,9 @@ def test_every_netcdf_file_passes_the_convention_checker(tmp_path):
             str(path), ["cf:1.11"], 0, "strict", output_filename=str(report)
         )
         assert passed and not errors, report.read_text()
+
+
+def test_how_a_stand_value_came_to_be_can_be_read_from_the_file(run):
+    origin = run.stand["stand_origin"]
+    assert origin.attrs["flag_meanings"].split()[1] == "measured"
+    assert "stand_origin" in run.stand["stand_transpiration"].attrs["ancillary_variables"]

@@ -112,7 +112,7 @@ def _count(text):
 
 
 def _init(options):
-    from sapflux.cli.starter import init
+    from sapflux.cli.init import init
 
     return init(options)
 

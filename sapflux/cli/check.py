@@ -2,7 +2,7 @@
 
 import sys
 
-from sapflux.cli.text import count, print_json
+from sapflux.cli.text import columns, count, note, print_json
 from sapflux.errors import UserError
 from sapflux.pipeline.check import check_site
 
@@ -37,5 +37,19 @@ def _print(path, report):
         count(report["files"], "file"),
     ]
     print(f"{path}: no fault. {', '.join(parts)}.")
-    for note in report["notes"]:
-        print(f"  note: {note}")
+    rows = [
+        [
+            row["stand"],
+            row["species"],
+            row["stems"],
+            f"{row['stems_per_ha']:.0f}",
+            f"{row['basal_area_m2_ha']:.1f}",
+            f"{row['sapwood_area_m2_ha']:.1f}",
+        ]
+        for row in report["strata"]
+    ]
+    header = ["stand", "species", "stems", "stems/ha", "basal area m2/ha", "sapwood m2/ha"]
+    for line in columns(rows, header, right=header[2:]) if rows else []:
+        print(f"  {line}")
+    for text in report["notes"]:
+        print(note(text))

@@ -2,7 +2,7 @@
 
 import sys
 
-from sapflux.cli.text import columns, count, millimetres, print_json, share
+from sapflux.cli.text import columns, count, millimetres, note, print_json, share
 from sapflux.pipeline.batch import dry_run, run_sites
 
 CAUTIONS = (
@@ -87,8 +87,9 @@ def _print(outcome, several):
     header = ["stand", "species", "mm", "days", "refused", "measured", "filled", ""]
     for line in columns(rows, header, right=header[2:7]):
         print(f"  {line}")
-    for line in found["notes"]:
-        print(f"\n  {line}")
+    print()
+    for text in found["notes"]:
+        print(note(text))
     print(f"\n  Written to {found['folder']} ({found['seconds']:.1f} s), run {found['identity']}:")
     for line in columns([[name, what] for name, what in found["written"]], ["", ""])[1:]:
         print(f"    {line}")

@@ -1,6 +1,7 @@
 """`sapflux stages`: what each stage does, with settings, units and sources."""
 
 import inspect
+import re
 import sys
 from typing import Literal, get_args, get_origin
 
@@ -8,8 +9,8 @@ import sapflux.correction
 import sapflux.scaling
 from sapflux.cli.text import columns, print_json
 from sapflux.errors import nearest
+from sapflux.pipeline.recipe import PARTS, known_settings
 from sapflux.stage import CHAINS, REGISTRY
-from sapflux.units import unit_of_key
 
 _ = (sapflux.correction, sapflux.scaling)  # imported for the stages they register
 
@@ -17,18 +18,30 @@ _ = (sapflux.correction, sapflux.scaling)  # imported for the stages they regist
 def stages(options):
     """List all stages, or explain one in full; exit code 2 for an unknown name."""
     found = [stage for (_, name), stage in REGISTRY.items() if options.name in (None, name)]
-    if not found:
-        known = {name for _, name in REGISTRY}
+    parts = [part for part in PARTS if options.name in (None, part, *known_settings(part))]
+    if not found and not parts:
+        known = {name for _, name in REGISTRY} | PARTS.keys()
         print(f"no stage {options.name!r}. {nearest(options.name, known)}", file=sys.stderr)
         return 2
     if options.json:
-        print_json([describe(stage) for stage in found])
+        print_json([*map(describe, found), *map(describe_part, parts)])
     elif options.name:
-        for stage in found:
-            _explain(stage)
+        for description in [*map(describe, found), *map(describe_part, parts)]:
+            _explain(description)
     else:
         _list(found)
     return 0
+
+
+def describe_part(part):
+    """A part of a recipe that is no stage, as plain data."""
+    settings = [
+        {"setting": name, "default": default, "unit": unit_in(PARTS[part], name),
+         "takes": f"{low:g} to {high:g}"}
+        for name, (default, low, high) in known_settings(part).items()
+    ]  # fmt: skip
+    return {"stage": f"[{part}]", "chain": "", "flags": [], "settings": settings,
+            "text": inspect.getdoc(PARTS[part])}  # fmt: skip
 
 
 def describe(stage):
@@ -45,13 +58,19 @@ def describe(stage):
             {
                 "setting": name,
                 "default": None if parameter.default is parameter.empty else parameter.default,
-                "unit": unit_of_key(name),
+                "unit": unit_in(stage.function, name),
                 "takes": _takes(stage, name, parameter),
             }
             for name, parameter in stage.settings.items()
         ],
         "text": inspect.getdoc(stage.function),
     }
+
+
+def unit_in(explained, name):
+    """The unit that a docstring gives a setting: `name : type [unit]`."""
+    found = re.search(rf"^{name} : [^\n]*\[([^\]]+)\]", inspect.getdoc(explained), re.M)
+    return found.group(1) if found else ""
 
 
 def _takes(stage, name, parameter):
@@ -74,25 +93,23 @@ def _list(found):
         for line in columns(rows, ["stage", "what it gives"]):
             print(f"  {line}")
         print()
-    print("sapflux stages NAME explains one with its settings and sources.")
+    print("[join], [totals]")
+    print("  the two parts that are no stages: how methods meet, and when a period may be totalled")
+    print("\nsapflux stages NAME explains one with its settings and sources.")
 
 
-def _explain(stage):
-    print(f"{stage.name}  ([[{stage.chain}]])\n")
-    print(inspect.getdoc(stage.function))
+def _explain(found):
+    print(f"{found['stage']}  ([[{found['chain']}]])\n" if found["chain"] else found["stage"])
+    print(found["text"])
     rows = [
-        [
-            row["setting"],
-            "needed" if row["default"] is None else row["default"],
-            row["unit"],
-            row["takes"],
-        ]
-        for row in describe(stage)["settings"]
-    ]
+        [row["setting"], "needed" if row["default"] is None else row["default"], row["unit"],
+         row["takes"]]
+        for row in found["settings"]
+    ]  # fmt: skip
     if rows:
         print("\nSettings")
         for line in columns(rows, ["setting", "default", "unit", "takes"]):
             print(f"  {line}")
-    if stage.flags:
-        print(f"\nFlags: {', '.join(stage.flags)}")
+    if found["flags"]:
+        print(f"\nFlags: {', '.join(found['flags'])}")
     print()

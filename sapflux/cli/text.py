@@ -2,6 +2,9 @@
 
 import json
 import math
+import textwrap
+
+from sapflux.pipeline.identity import plain
 
 
 def columns(rows, header, right=()):
@@ -42,18 +45,15 @@ def count(number, word):
     return f"{number:,} {word}{'' if number == 1 else 's'}"
 
 
+def note(text):
+    """A note as indented lines of at most 100 characters.
+
+    >>> note("the file is empty")
+    '  note: the file is empty'
+    """
+    return textwrap.fill(text, 100, initial_indent="  note: ", subsequent_indent="        ")
+
+
 def print_json(value):
     """JSON alone on stdout; absent numbers as null."""
-    print(json.dumps(_plain(value), indent=2, ensure_ascii=False))
-
-
-def _plain(value):
-    if isinstance(value, dict):
-        return {str(key): _plain(item) for key, item in value.items()}
-    if isinstance(value, list | tuple):
-        return [_plain(item) for item in value]
-    if hasattr(value, "item"):
-        value = value.item()
-    if isinstance(value, float) and not math.isfinite(value):
-        return None
-    return value if isinstance(value, str | int | float | bool | None) else str(value)
+    print(json.dumps(plain(value), indent=2, ensure_ascii=False))

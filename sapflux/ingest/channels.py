@@ -7,19 +7,24 @@ from sapflux.ingest.series import Series
 from sapflux.schema import QUANTITIES
 
 
+def within(site, channel, end, interval_s):
+    """(time) bool: records that lie wholly in the span of a channel. end : [UTC]."""
+    start, stop = site.utc(channel.from_), site.utc(channel.to)
+    inside = np.ones(len(end), dtype=bool)
+    if start is not None:
+        inside &= end - np.timedelta64(interval_s, "s") >= start
+    if stop is not None:
+        inside &= end <= stop
+    return inside
+
+
 def values_of(channel, series, site):
     """The records of one channel, in SI, from its own span of time.
 
     Returns (rows, values, withheld): indices into the log's rows, float64 values in SI, and where
     two downloads gave different values.
     """
-    step = np.timedelta64(series.interval_s, "s")
-    start, stop = site.utc(channel.from_), site.utc(channel.to)
-    inside = np.ones(len(series.end), dtype=bool)
-    if start is not None:
-        inside &= series.end - step >= start
-    if stop is not None:
-        inside &= series.end <= stop
+    inside = within(site, channel, series.end, series.interval_s)
     rows = np.flatnonzero(inside)
     if channel.column not in series.values:
         return rows[:0], np.empty(0), np.empty(0, dtype=bool)

@@ -5,11 +5,12 @@ import xarray as xr
 
 from sapflux import quality, schema
 from sapflux.errors import DataError, Fault
-from sapflux.ingest.channels import single_series, values_of
+from sapflux.ingest.channels import single_series, values_of, within
 from sapflux.ingest.series import grid, on_records, place
+from sapflux.site.installations import installation_numbers
 
 # Series of a whole logger or tree that a stage may ask for beside the probe's own signal.
-BESIDE = {"heater_voltage": "log", "heater_state": "log", "stem_temperature": "tree"}
+OWNER_OF = {"heater_voltage": "log", "heater_state": "log", "stem_temperature": "tree"}
 
 
 def measured_cubes(site, logs):
@@ -95,11 +96,13 @@ def _cube(site, logs, key, channels):
         with np.errstate(invalid="ignore"):
             beyond[where] |= (values < row.low) | (values > row.high)
     excluded = _excluded(site, probes, channels, time, interval_s)[:, None, :]
+    outside = installation_numbers(site, probes, time, interval_s) < 0
     bits = quality.bits(
         no_record=~expected | absent,
         conflicting=conflicting,
         out_of_range=beyond,
         excluded=np.broadcast_to(excluded, shape),
+        not_installed=np.broadcast_to(outside[:, None, :], shape),
     )
     variables = {name: (schema.RECORD, values) for name, values in signals.items()}
     variables["quality"] = (schema.RECORD, bits)
@@ -137,19 +140,34 @@ def _excluded(site, probes, channels, time, interval_s):
 
 
 def _beside(site, logs, probes, channels, time, interval_s):
-    """Series of the probe itself, of its logger or of its tree, laid on the records."""
+    """Series of the probe itself, of its loggers or of its tree, laid on the records.
+
+    What belongs to a logger counts while the probe's signal is on it.
+    """
     trees = {p.probe: p.tree for p in site.table("probes")}
-    log_of = {channel.id: channel.log for channel in channels}
     found = {}
-    for name, kind in BESIDE.items():
-        owners = {"log": log_of, "tree": trees}[kind]
+    for name, kind in OWNER_OF.items():
         rows = np.full((len(probes), len(time)), np.nan)
         for index, probe in enumerate(probes):
-            series = single_series(site, logs, "probe", name, probe)
-            if series is None:
-                series = single_series(site, logs, kind, name, owners.get(probe))
-            if series is not None:
-                rows[index] = on_records(series, time, interval_s)
+            own = single_series(site, logs, "probe", name, probe)
+            if own is not None:
+                rows[index] = on_records(own, time, interval_s)
+                continue
+            for owner, inside in _owners(kind, probe, trees, channels, site, time, interval_s):
+                series = single_series(site, logs, kind, name, owner)
+                if series is not None:
+                    rows[index, inside] = on_records(series, time[inside], interval_s)
         if np.isfinite(rows).any():
             found[name] = (schema.PROBE, rows)
     return found
+
+
+def _owners(kind, probe, trees, channels, site, time, interval_s):
+    """The tree of a probe, or each logger its signal was on, and the records of that span."""
+    if kind == "tree":
+        return [(trees.get(probe), np.ones(len(time), dtype=bool))]
+    return [
+        (channel.log, within(site, channel, time, interval_s))
+        for channel in channels
+        if channel.id == probe
+    ]

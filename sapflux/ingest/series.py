@@ -5,6 +5,11 @@ from dataclasses import dataclass
 import numpy as np
 
 
+# Share of a record's values that must be there for their mean to stand for it: own judgement.
+# Half of a half hour of weather is still that half hour's weather; a single value may be a gust.
+LEAST_SHARE = 0.5
+
+
 @dataclass(frozen=True)
 class Series:
     """One quantity on its own regular clock: ends of intervals (UTC), seconds, values (SI)."""
@@ -25,7 +30,7 @@ def place(end, first_end, interval_s):
     return ((end - first_end) / np.timedelta64(interval_s, "s")).astype(np.int64)
 
 
-def on_records(series, end, interval_s, least_share=0.5):
+def on_records(series, end, interval_s, least_share=LEAST_SHARE):
     """A series on the records of another clock.
 
     A record no longer than the series' interval takes the value of the interval that holds its

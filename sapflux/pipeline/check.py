@@ -2,9 +2,13 @@
 
 from sapflux.errors import DataError, Fault, SiteError, nearest
 from sapflux.ingest.logs import match_files, read_header
+from sapflux.pipeline.notes import notes_of
 from sapflux.pipeline.plan import methods_of, plan_faults
 from sapflux.pipeline.recipe import load_recipe
+from sapflux.site.inventory import composition
 from sapflux.site.load import load_site
+
+M2_PER_HA = 1e4
 
 
 def check_site(path, recipe="stand_water_use"):
@@ -18,6 +22,7 @@ def check_site(path, recipe="stand_water_use"):
     faults += plan_faults(site, recipe)
     if faults:
         raise SiteError(faults)
+    notes += notes_of(site, recipe)
     if not site.logs:
         notes.append("a plan without logs: it can be checked, but there is nothing to run")
     elif not methods_of(site):
@@ -29,7 +34,20 @@ def check_site(path, recipe="stand_water_use"):
         "stands": len({row.stand for row in site.table("trees")}),
         "logs": len(site.logs),
         "files": files,
+        "strata": [_stratum(*key, part) for key, part in composition(site).items()],
         "notes": notes,
+    }
+
+
+def _stratum(stand, species, part):
+    """What the inventory says of a species in a stand, in the units of foresters."""
+    return {
+        "stand": stand,
+        "species": species,
+        "stems": part.stems,
+        "stems_per_ha": part.stems_per_ha,
+        "basal_area_m2_ha": part.basal_area_m2_ha,
+        "sapwood_area_m2_ha": part.sapwood_per_ground * M2_PER_HA,
     }
 
 

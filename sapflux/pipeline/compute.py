@@ -15,9 +15,10 @@ from sapflux.ingest.weather import weather_series
 from sapflux.pipeline.beside import probe_chain_beside, scaling_beside
 from sapflux.pipeline.check import header_faults
 from sapflux.pipeline.execute import BLOCK_DAYS, Chain, fitted_tables, run_blocks
-from sapflux.pipeline.installations import FlagCounts, installation_table
+from sapflux.pipeline.installation_lives import FlagCounts, installation_table
 from sapflux.pipeline.join import Joined, common_grid
-from sapflux.pipeline.totals import total_tables
+from sapflux.pipeline.notes import notes_of
+from sapflux.pipeline.total_tables import total_tables
 from sapflux.scaling.whole_stands import with_whole_stands
 from sapflux.site import facts
 
@@ -44,9 +45,9 @@ def compute(site, recipe, *, native=False, block_days=BLOCK_DAYS):
     DataError where the site has no logs, or its files lack what the channels name.
     """
     stopwatch = _Stopwatch()
-    logs = _read_logs(site)
+    logs, notes = _read_logs(site)
     stopwatch.lap("read")
-    found = Computed(logs)
+    found = Computed(logs, notes=notes + notes_of(site, recipe))
     cubes = measured_cubes(site, logs)
     weather = weather_series(site, logs)
     stopwatch.lap("assemble")
@@ -57,7 +58,7 @@ def compute(site, recipe, *, native=False, block_days=BLOCK_DAYS):
             Fault(
                 str(site.folder),
                 "the downloads hold no record of a probe",
-                "See check, and the from and to of channels.csv.",
+                f"Run `sapflux check {site.folder}`; see from and to in channels.csv.",
             )
         )
     joined = Joined(list(cubes.values()), ends, step_s, recipe.join["least_coverage"])
@@ -95,10 +96,10 @@ def _read_logs(site):
                 "Name its downloads under [logs.NAME].",
             )
         )
-    faults, _, _ = header_faults(site)
+    faults, notes, _ = header_faults(site)
     if faults:
         raise DataError(faults)
-    return {name: read_log(site, name) for name in site.logs}
+    return {name: read_log(site, name) for name in site.logs}, notes
 
 
 def _labelled(site, cube):

@@ -32,8 +32,10 @@ class Joined:
     """Flux density, quality and origin of all probes on the common step, filled block by block.
 
     Means are weighted with the covered time, which for the equal records of one cube is their
-    count; a step with less than `least_coverage` of its records is NaN and flagged. A step keeps
-    every flag of its records, also where the rest of the step gives a value.
+    count. A step keeps every flag of its records, also where the rest of the step gives a value.
+
+    least_coverage : share of the records of a step that must have a value; with less the step is
+        NaN and flagged. Source: hourly completeness of 75 %, common practice.
     """
 
     def __init__(self, cubes, ends, step_s, least_coverage):
@@ -50,7 +52,7 @@ class Joined:
     def add(self, probes, flux, bits, record_ends, interval_s):
         """Lay the core of one block of one cube: names of its probes, (probe, point, time).
 
-        Steps that another cube has filled are left alone where this one has no record.
+        A step that two cubes share keeps the value of the first and the flags of both.
         """
         per_step = self.step_s // interval_s
         step = np.timedelta64(self.step_s, "s")
@@ -74,13 +76,12 @@ class Joined:
         )
         rows = [self.probes.index(str(name)) for name in probes]
         here = np.ix_(rows, range(flux.shape[1]), range(low, high))
-        take = (count > 0) | (self.coverage[here] == 0)
-        for laid, new in [
-            (self.flux, np.where(enough, mean, np.nan)),
-            (self.quality, joined),
-            (self.coverage, share),
-        ]:
-            laid[here] = np.where(take, new, laid[here])
+        before = self.coverage[here] > 0
+        take = (count > 0) | ~before
+        both = before & (count > 0)
+        self.flux[here] = np.where(take & ~both, np.where(enough, mean, np.nan), self.flux[here])
+        self.quality[here] = np.where(take, joined, 0) | np.where(before, self.quality[here], 0)
+        self.coverage[here] = np.where(take, share, 0) + np.where(before, self.coverage[here], 0)
 
     def dataset(self):
         """The joined cube."""

@@ -65,7 +65,7 @@ def global_attributes(level, site, span, attributes):
     title, summary, keywords = LEVELS[level]
     created, version = attributes["date_created"], sapflux.__version__
     made = {
-        "Conventions": schema.CF_VERSION,
+        "Conventions": schema.CONVENTIONS,
         "title": f"{title} at {site.position.name}",
         "summary": summary,
         "keywords": keywords,

@@ -32,13 +32,14 @@ COUNTED = {
     "line": ("line in the input file, from 1", "1"),
 }
 SUMS = {"precipitation", "throughfall"}
-NOT_AVERAGED = {"quality", "origin", "installation", "live_trees", "in_leaf"}
+ENUMERATED = {"origin", "stand_origin"}
+NOT_AVERAGED = {"quality", *ENUMERATED, "installation", "live_trees", "in_leaf"}
 ANCILLARY = {
     "tree_flow": ("tree_filled_share",),
     "probe_flow": ("probe_filled_share",),
-    "stand_transpiration": ("stand_filled_share", "live_trees"),
+    "stand_transpiration": ("stand_origin", "stand_filled_share", "live_trees"),
 }
-BESIDE = {"installation", "in_leaf", "live_trees", "probe_filled_share", "tree_filled_share",
+AUXILIARY = {"installation", "in_leaf", "live_trees", "probe_filled_share", "tree_filled_share",
           "stand_filled_share"}  # fmt: skip
 TELLING = ("qualityInformation", "auxiliaryInformation")
 TIME = {
@@ -166,9 +167,9 @@ def _ancillary(name):
 
 def _content(name):
     """What kind of content a variable is, by the vocabulary of ACDD."""
-    if name in ("quality", "origin"):
+    if name in {"quality", *ENUMERATED}:
         return "qualityInformation"
-    return "auxiliaryInformation" if name in BESIDE or name in COUNTED else "physicalMeasurement"
+    return "auxiliaryInformation" if name in AUXILIARY or name in COUNTED else "physicalMeasurement"
 
 
 def _cell_method(name, pulses):
@@ -230,7 +231,7 @@ def _variable(name, variable, is_data):
         return xr.Variable(variable.dims, texts, {"long_name": LABELS[name]}, encoding)
     attrs = _attributes(name)
     attrs["coverage_content_type"] = _content(name) if is_data else "coordinate"
-    if name == "origin":
+    if name in ENUMERATED:
         values = values.astype(np.int8)
     elif values.dtype.kind in "iub":
         values = values.astype(np.int32)
@@ -256,9 +257,9 @@ def _attributes(name):
         attrs["long_name"] += ", as logged"
     if name == "quality":
         attrs |= quality.quality_attributes()
-    if name == "origin":
+    if name in ENUMERATED:
         attrs |= quality.origin_attributes()
-    if name in ("quality", "origin"):
+    if name in {"quality", *ENUMERATED}:
         del attrs["units"]  # flags have none
     return attrs
 

@@ -7,8 +7,8 @@ import numpy as np
 import sapflux
 from sapflux.ingest.ledger import conflicts_table, ledger_table, rejected_table
 from sapflux.pipeline import netcdf
-from sapflux.pipeline.evidence import night_tables
 from sapflux.pipeline.identity import file_sha256, identity, write_json
+from sapflux.pipeline.night_columns import night_tables
 from sapflux.pipeline.tables import write_csv
 
 CONFLICT_NAMES = {

@@ -1,7 +1,7 @@
 """Whether a recipe can run on a site: checked whole before any data file is opened."""
 
 from sapflux.errors import Fault, RecipeError
-from sapflux.ingest.cube import BESIDE, probe_names
+from sapflux.ingest.cube import OWNER_OF, probe_names
 from sapflux.ingest.weather import weather_names
 from sapflux.schema import SIGNALS
 
@@ -75,7 +75,7 @@ def measured_names(site, method):
     """Variables of the measured cube of a method."""
     probes = set(probe_names(site, method))
     signals = {c.quantity for c in site.table("channels") if c.kind == "probe" and c.id in probes}
-    beside = {c.quantity for c in site.table("channels") if c.quantity in BESIDE}
+    beside = {c.quantity for c in site.table("channels") if c.quantity in OWNER_OF}
     return signals | beside
 
 

@@ -11,11 +11,13 @@ from typing import Literal, get_args, get_origin
 import sapflux.correction
 import sapflux.scaling
 from sapflux.errors import Fault, RecipeError, nearest
+from sapflux.pipeline.join import Joined
 from sapflux.scaling.completeness import Completeness
 from sapflux.stage import CHAINS, REGISTRY, Stage
 
-# Settings of the two parts of a recipe that are no stages: default, lowest, highest.
-JOIN = {"least_coverage": (0.75, 0.0, 1.0)}
+JOIN = {"least_coverage": (0.75, 0.0, 1.0)}  # default, lowest, highest
+# The two parts of a recipe that are no stages, and where their settings are explained.
+PARTS = {"join": Joined, "totals": Completeness}
 
 
 @dataclass(frozen=True)
@@ -126,14 +128,13 @@ def read_recipe(raw, where, name):
         faults += _order_faults(chains[chain], where)
     if not any(chains.values()) and not faults:
         faults.append(Fault(where, "the recipe has no stage", "List stages under [[scaling]], ..."))
-    totals = {k: (v, *Completeness.limits()[k]) for k, v in Completeness.defaults().items()}
     recipe = Recipe(
         name=name,
         title=str(raw.get("title", name)),
         where=where,
         chains=MappingProxyType(chains),
-        join=MappingProxyType(_plain(raw, "join", JOIN, where, faults)),
-        totals=MappingProxyType(_plain(raw, "totals", totals, where, faults)),
+        join=MappingProxyType(_part_settings(raw, "join", where, faults)),
+        totals=MappingProxyType(_part_settings(raw, "totals", where, faults)),
     )
     if faults:
         raise RecipeError(faults)
@@ -225,8 +226,17 @@ def _order_faults(steps, where):
                 )
 
 
-def _plain(raw, part, known, where, faults):
+def known_settings(part):
+    """name -> (default, lowest, highest) of a part of a recipe that is no stage."""
+    if part == "join":
+        return JOIN
+    limits = Completeness.limits()
+    return {name: (value, *limits[name]) for name, value in Completeness.defaults().items()}
+
+
+def _part_settings(raw, part, where, faults):
     """The settings of a part that is no stage."""
+    known = known_settings(part)
     values = {key: default for key, (default, _, _) in known.items()}
     table = raw.get(part, {})
     if not isinstance(table, dict):

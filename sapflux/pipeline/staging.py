@@ -47,7 +47,7 @@ def publish(out, site_key, identity, write, keep_all=False):
             try:
                 places.staging.mkdir()
                 write(places.staging)
-                written = run_identity_of(places.staging)
+                written = written_identity(places.staging)
                 if written != identity:
                     raise ValueError(f"run.json says identity {written!r}, not {identity!r}")
                 _swap(places)
@@ -74,7 +74,7 @@ def recover(out, site_key):
         _recover(places)
 
 
-def run_identity_of(folder):
+def written_identity(folder):
     """The identity in a run's `run.json`, "" where there is none that can be read."""
     try:
         record = json.loads((Path(folder) / "run.json").read_text(encoding="utf-8"))
@@ -104,7 +104,7 @@ class _Places:
 def _swap(places):
     """The two renames. The first moves the former run aside, the second the new one in."""
     if places.place.exists():
-        if run_identity_of(places.place):
+        if written_identity(places.place):
             places.place.rename(places.former)
         else:
             places.place.rmdir()  # empty, as was checked
@@ -131,14 +131,14 @@ def _file_former(places, keep_all):
     if not any(places.former.iterdir()):  # deleted but for the folder itself
         places.former.rmdir()
         return
-    identity = run_identity_of(places.former)
+    identity = written_identity(places.former)
     if not identity:
         raise UserError(Fault(
             str(places.former), "holds something else than a run: it has no run.json",
             "Move it away, and run again.",
         ))  # fmt: skip
     target = places.earlier / identity
-    if identity == run_identity_of(places.place) or target.exists():
+    if identity == written_identity(places.place) or target.exists():
         _remove(places.former)
         return
     if not keep_all:
@@ -174,7 +174,7 @@ def _check_replaceable(place):
     """UserError where a run would replace what is no run."""
     if not place.exists() or (place.is_dir() and not any(place.iterdir())):
         return
-    if not place.is_dir() or not run_identity_of(place):
+    if not place.is_dir() or not written_identity(place):
         raise UserError(Fault(
             str(place), "holds something else than a run: it has no run.json with an identity",
             "Choose another --out, or move it away.",

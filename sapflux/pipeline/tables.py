@@ -10,7 +10,7 @@ import numpy as np
 import pandas as pd
 
 from sapflux import quality
-from sapflux.pipeline.evidence import NIGHTS
+from sapflux.pipeline.night_columns import NIGHTS
 
 TOTALS = (
     "stand", "species", "start", "end", "transpiration_mm", "lower_mm", "upper_mm",

@@ -54,7 +54,9 @@ def test_check_lists_faults_on_stderr(starter, tmp_path, capsys):
     folder = broken(starter, tmp_path)
     assert main(["check", str(folder)]) == 2
     told = capsys.readouterr()
-    assert "latitude" in told.err and "1 fault" not in told.out
+    assert told.out == ""
+    assert "unknown key 'latitude'" in told.err or "'latitude'" in told.err
+    assert told.err.rstrip().endswith("faults")
 
 
 def test_check_prints_json_alone(starter, tmp_path, capsys):
@@ -145,7 +147,40 @@ def test_stages_lists_and_explains(capsys):
     assert "zero_flow_difference" in capsys.readouterr().out
     assert main(["stages", "zero_flow_difference"]) == 0
     told = capsys.readouterr().out
-    assert "highest_deficit_kPa" in told and "Source:" in told and "kPa" in told
+    assert "highest_deficit_kPa  0.05          kPa" in told and "Source:" in told
+
+
+def test_stages_explains_the_parts_that_are_no_stages(capsys):
+    assert main(["stages", "least_daylight"]) == 0
+    assert "longest_daylight_gap_h" in capsys.readouterr().out
+    assert main(["stages", "join", "--json"]) == 0
+    (part,) = json.loads(capsys.readouterr().out)
+    assert part["settings"][0]["setting"] == "least_coverage"
+
+
+def test_every_setting_that_carries_a_unit_in_its_name_prints_that_unit(capsys):
+    assert main(["stages", "--json"]) == 0
+    endings = {
+        "_K": "K",
+        "_kPa": "kPa",
+        "_h": "h",
+        "_d": "d",
+        "_min": "min",
+        "_V": "V",
+        "_mm": "mm",
+        "_cm_h": "cm h-1",
+        "_degC": "degC",
+        "_uV_per_K": "uV K-1",
+    }
+    seen = set()
+    for stage in json.loads(capsys.readouterr().out):
+        for row in stage["settings"]:
+            fitting = [e for e in endings if row["setting"].endswith(e)]
+            if fitting:
+                longest = max(fitting, key=len)
+                assert row["unit"] == endings[longest], row
+                seen.add(longest)
+    assert seen == set(endings)
 
 
 def test_stages_names_the_nearest_of_an_unknown_one(capsys):
