@@ -52,6 +52,9 @@ ROWS = [
 ]  # fmt: skip
 
 FLAGS = {row.name: row for row in ROWS}
+# Flags that belong to the common step and to what is scaled from it, not to a record as logged.
+SCALED = {"partly_missing", "incomplete_step", "incomplete_radius", "few_trees", "borrowed"}
+NATIVE = tuple(name for name in FLAGS if name not in SCALED)
 MASKING = np.int32(sum(row.mask for row in ROWS if row.masks))
 
 ORIGINS = {

@@ -15,7 +15,36 @@ import inspect
 from collections.abc import Callable
 from dataclasses import dataclass, field
 
-CHAINS = ("heat_dissipation", "heat_ratio", "scaling")
+# The order of work: every stage of each chain, in the order in which a recipe must list those it
+# takes. Faults first, then the zero, then geometry, then the calibration; then gaps, the stem, the
+# tree, the stand. A stage works on what those before it have made.
+ORDER = {
+    "heat_dissipation": (
+        "heated_difference",
+        "screen_power_loss",
+        "zero_flow_difference",
+        "sapwood_contact",
+        "flow_index",
+        "flux_density",
+    ),
+    "heat_ratio": (
+        "rises",
+        "log_heat_ratio",
+        "thermal_diffusivity",
+        "heat_pulse_velocity",
+        "zero_offset",
+        "wound",
+        "flux_density",
+    ),
+    "scaling": (
+        "short_gaps",
+        "probe_flow",
+        "tree_flow",
+        "stand_transpiration",
+        "dormancy",
+    ),
+}
+CHAINS = tuple(ORDER)
 
 
 @dataclass(frozen=True)
@@ -32,8 +61,13 @@ class Stage:
     fit: Callable | None = None
     reach_s: Callable | None = None
     method_needs: dict = field(default_factory=dict)
-    after: tuple = ()
     limits: dict = field(default_factory=dict)
+
+    @property
+    def after(self):
+        """Stages that, where the recipe lists them, must come earlier than this one."""
+        order = ORDER.get(self.chain, ())
+        return order[: order.index(self.name)] if self.name in order else ()
 
     @property
     def needs(self):
@@ -65,15 +99,14 @@ REGISTRY = {}  # (chain, name) -> Stage
 def stage(*, chain, makes=(), flags=(), **declared):
     """Register a function as a stage and return it untouched.
 
-    chain : name or names of the recipe lists it may stand in (see `CHAINS`).
+    chain : name or names of the recipe lists it may stand in (see `ORDER`).
     makes, flags : variables and quality flags it returns.
     table : name of its table; summarise, fit : the functions that make it (see module).
     reach_s : settings -> seconds it looks to either side of a record, or of a row's start.
     method_needs : method -> names needed by that `method` setting only.
-    after : stages that, where the recipe lists them, must come earlier than this one.
     limits : setting -> (lowest, highest) allowed.
 
-    ValueError if the chain has a stage of that name.
+    ValueError if the chain has a stage of that name, or `ORDER` gives it no place in the chain.
     """
 
     def register(function):
@@ -81,6 +114,8 @@ def stage(*, chain, makes=(), flags=(), **declared):
         for one in _names(chain):
             if (one, name) in REGISTRY:
                 raise ValueError(f"stage {name!r} stands twice in {one}")
+            if one in ORDER and name not in ORDER[one]:
+                raise ValueError(f"stage {name!r} has no place in the order of work of {one}")
             REGISTRY[one, name] = Stage(
                 name=name,
                 function=function,

@@ -2,6 +2,20 @@
 
 import re
 
+from sapflux.constants import ZERO_CELSIUS
+
+# Factors to SI. Exact by definition (SI brochure, 9th edition, 2019).
+MM = 1e-3  # in m
+CM = 1e-2  # in m
+CM2 = 1e-4  # in m2
+CM2_PER_S = 1e-4  # in m2 s-1
+G = 1e-3  # in kg
+# What divides a length, and what multiplies one to show it: a quotient of short decimal numbers is
+# rounded once, a product with a rounded factor twice.
+MM_PER_M = 1000.0
+CM_PER_M = 100.0
+M2_PER_HA = 1e4
+
 # unit as written -> (SI unit, factor, offset): si = value * factor + offset.
 # Factors are exact by definition (SI brochure, 9th edition, 2019).
 UNITS = {
@@ -13,7 +27,7 @@ UNITS = {
     "A": ("A", 1.0, 0.0),
     "mA": ("A", 1e-3, 0.0),
     "K": ("K", 1.0, 0.0),
-    "degC": ("K", 1.0, 273.15),
+    "degC": ("K", 1.0, ZERO_CELSIUS),
     "degF": ("K", 5.0 / 9.0, 459.67 * 5.0 / 9.0),
     "Pa": ("Pa", 1.0, 0.0),
     "hPa": ("Pa", 100.0, 0.0),
@@ -21,19 +35,22 @@ UNITS = {
     "MPa": ("Pa", 1e6, 0.0),
     "W m-2": ("W m-2", 1.0, 0.0),
     "m": ("m", 1.0, 0.0),
-    "cm": ("m", 1e-2, 0.0),
-    "mm": ("m", 1e-3, 0.0),
+    "cm": ("m", CM, 0.0),
+    "mm": ("m", MM, 0.0),
     "um": ("m", 1e-6, 0.0),
     "m s-1": ("m s-1", 1.0, 0.0),
-    "cm h-1": ("m s-1", 0.01 / 3600.0, 0.0),
-    "mm h-1": ("m s-1", 0.001 / 3600.0, 0.0),
-    "cm s-1": ("m s-1", 0.01, 0.0),
+    "cm h-1": ("m s-1", CM / 3600.0, 0.0),
+    "mm h-1": ("m s-1", MM / 3600.0, 0.0),
+    "cm s-1": ("m s-1", CM, 0.0),
     "m3 m-3": ("1", 1.0, 0.0),
     "m3 s-1": ("m3 s-1", 1.0, 0.0),
     "L s-1": ("m3 s-1", 1e-3, 0.0),
     "kg m-2": ("kg m-2", 1.0, 0.0),
     "mm water": ("kg m-2", 1.0, 0.0),
 }
+
+# Factors to SI of config keys, by the unit that `unit_of_key` finds; units of SI are left out.
+KEY_FACTORS = {"mm": MM, "cm": CM, "cm2_s": CM2_PER_S, "g_m2_s": G}
 
 # A temperature difference has no offset, whatever scale it is written in.
 DIFFERENCE_FACTORS = {"K": 1.0, "degC": 1.0, "degF": 5.0 / 9.0}
@@ -60,6 +77,15 @@ def to_si(values, unit, *, difference=False):
         return values * DIFFERENCE_FACTORS[unit]
     _, factor, offset = UNITS[unit]
     return values * factor + offset if offset else values * factor
+
+
+def factor_of_key(key):
+    """What turns the value of a config key into SI, by the unit that it carries after its name.
+
+    >>> factor_of_key("wound_width_mm"), factor_of_key("window_from_s"), factor_of_key("exponent")
+    (0.001, 1.0, 1.0)
+    """
+    return KEY_FACTORS.get(unit_of_key(key), 1.0)
 
 
 def unit_of_key(key):

@@ -30,6 +30,22 @@ def test_trade_units_by_hand():
     assert units.to_si(3.6, "cm h-1") == pytest.approx(1e-5, rel=1e-12)
 
 
+@pytest.mark.parametrize(
+    ("key", "written", "si"),
+    [
+        ("width_mm", "mm", "m"),
+        ("diameter_cm", "cm", "m"),
+        ("diffusivity_cm2_s", "cm2 s-1", "m2 s-1"),
+        ("factor_g_m2_s", "g m-2 s-1", "kg m-2 s-1"),
+        ("dry_density_kg_m3", "kg m-3", "kg m-3"),
+        ("window_from_s", "s", "s"),
+    ],
+)
+def test_keys_carry_the_factor_that_udunits_gives_their_unit(key, written, si):
+    expected = cf_units.Unit(written).convert(1.0, cf_units.Unit(si))
+    assert units.factor_of_key(key) == pytest.approx(expected, rel=1e-12)
+
+
 def test_a_temperature_difference_takes_no_offset():
     assert units.to_si(10.0, "degF", difference=True) == pytest.approx(50 / 9)
     assert units.to_si(10.0, "degC", difference=True) == 10.0

@@ -70,7 +70,13 @@ def parser():
     run = commands.add_parser("run", help="downloads in, stand millimetres out")
     _sites(run)
     run.add_argument("--out", metavar="DIR", default="results", help="default: results")
-    run.add_argument("--jobs", type=_count, default=1, metavar="N", help="sites at the same time")
+    many = run.add_mutually_exclusive_group()
+    many.add_argument("--jobs", type=_count, default=1, metavar="N", help="sites at the same time")
+    many.add_argument(
+        "--scheduler",
+        metavar="ADDRESS",
+        help="run the sites on the workers of a dask.distributed scheduler",
+    )
     run.add_argument(
         "--native", action="store_true", help="also write each method's signals at the native step"
     )

@@ -22,6 +22,7 @@ def run(options):
     for outcome in run_sites(
         options.sites,
         jobs=options.jobs,
+        scheduler=options.scheduler,
         recipe=options.recipe,
         out=options.out,
         native=options.native,

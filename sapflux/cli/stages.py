@@ -10,7 +10,7 @@ import sapflux.scaling
 from sapflux.cli.text import columns, print_json
 from sapflux.errors import nearest
 from sapflux.pipeline.recipe import PARTS, known_settings
-from sapflux.stage import CHAINS, REGISTRY
+from sapflux.stage import ORDER, REGISTRY
 
 _ = (sapflux.correction, sapflux.scaling)  # imported for the stages they register
 
@@ -83,11 +83,12 @@ def _takes(stage, name, parameter):
 
 
 def _list(found):
-    for chain in CHAINS:
+    by_name = {(stage.chain, stage.name): stage for stage in found}
+    for chain, names in ORDER.items():
         rows = [
-            [stage.name, inspect.getdoc(stage.function).splitlines()[0]]
-            for stage in found
-            if stage.chain == chain
+            [name, inspect.getdoc(by_name[chain, name].function).splitlines()[0]]
+            for name in names
+            if (chain, name) in by_name
         ]
         print(f"[[{chain}]]")
         for line in columns(rows, ["stage", "what it gives"]):

@@ -2,7 +2,6 @@
 
 import xarray as xr
 
-from sapflux.correction.order import stages_before
 from sapflux.physics import dissipation
 from sapflux.stage import stage
 
@@ -11,7 +10,6 @@ from sapflux.stage import stage
     chain="heat_dissipation",
     makes="heated_difference",
     flags=("no_contact", "contact_undefined"),
-    after=stages_before("heat_dissipation", "sapwood_contact"),
     limits={"least_fraction": (0.05, 1.0)},
 )
 def sapwood_contact(
@@ -29,8 +27,8 @@ def sapwood_contact(
         Share of the needle in conducting sapwood. Where it is not given (NaN), the needle counts
         as wholly in sapwood.
     least_fraction : float [1]
-        With less of the needle in sapwood the error of the correction explodes.
-        Source: Clearwater et al. (1999); the bound is common practice.
+        Least share of the needle in sapwood that is corrected for: with less, the error of the
+        correction explodes. Common practice.
 
     Returns
     -------

@@ -5,7 +5,6 @@ from typing import Literal
 import xarray as xr
 
 from sapflux.constants import WATER_DENSITY
-from sapflux.correction.order import stages_before
 from sapflux.physics import dissipation
 from sapflux.physics.heat_pulse import CM_PER_HOUR
 from sapflux.stage import stage
@@ -16,7 +15,6 @@ from sapflux.stage import stage
     makes="flux_density",
     flags=("beyond_calibration", "no_calibration"),
     method_needs={"species": ("calibration_factor", "calibration_exponent")},
-    after=stages_before("heat_dissipation", "flux_density"),
     limits={"highest_general_cm_h": (1.0, 500.0)},
 )
 def flux_density(
@@ -46,7 +44,7 @@ def flux_density(
         Its exponent, and the range of flow index that it covers, open where NaN.
     method : text
         "species_else_general" takes the species' own calibration where there is one,
-        "species" that alone, "general" never.
+        "species" that alone, "general" never. Own judgement.
     highest_general_cm_h : float [cm h-1]
         Flux density up to which the general calibration is valid.
         Source: Granier (1985), value from memory.

@@ -2,7 +2,6 @@
 
 import xarray as xr
 
-from sapflux.correction.order import stages_before
 from sapflux.physics import dissipation
 from sapflux.stage import stage
 
@@ -11,7 +10,6 @@ from sapflux.stage import stage
     chain="heat_dissipation",
     makes="flow_index",
     flags=("above_baseline", "heater_failure"),
-    after=stages_before("heat_dissipation", "flow_index"),
 )
 def flow_index(heated_difference, zero_flow_difference, /):
     """How far sap flow has cooled a continuously heated needle.

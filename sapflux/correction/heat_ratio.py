@@ -3,7 +3,6 @@
 import numpy as np
 import xarray as xr
 
-from sapflux.correction.order import stages_before
 from sapflux.physics import heat_pulse
 from sapflux.stage import stage
 
@@ -11,7 +10,6 @@ from sapflux.stage import stage
 @stage(
     chain="heat_ratio",
     makes=("rise_downstream", "rise_upstream"),
-    after=stages_before("heat_ratio", "rises"),
 )
 def rises(
     temperature_before_downstream=None,
@@ -80,7 +78,6 @@ def _rise(rise, before, after, like):
     chain="heat_ratio",
     makes="log_heat_ratio",
     flags="log_domain",
-    after=stages_before("heat_ratio", "log_heat_ratio"),
 )
 def log_heat_ratio(
     rise_downstream=None,

@@ -5,7 +5,6 @@ from typing import Literal
 import xarray as xr
 
 from sapflux.constants import ZERO_CELSIUS
-from sapflux.correction.order import stages_before
 from sapflux.physics import thermocouple
 from sapflux.stage import stage
 
@@ -15,7 +14,6 @@ from sapflux.stage import stage
     makes="heated_difference",
     flags="no_stem_temperature",
     method_needs={"its90_measured": ("stem_temperature",)},
-    after=stages_before("heat_dissipation", "heated_difference"),
     limits={
         "assumed_stem_temperature_degC": (-20.0, 50.0),
         "sensitivity_uV_per_K": (30.0, 70.0),
@@ -50,11 +48,12 @@ def heated_difference(
         At the reference needle.
     method : text
         "its90_given" takes the assumed stem temperature, "its90_measured" the logged one,
-        "constant" the sensitivity.
+        "constant" the sensitivity. The default corrects for neither, see above. Own judgement.
     assumed_stem_temperature_degC : float [degC]
-        Common practice.
+        Of "its90_given", temperature of the reference needle. Common practice.
     sensitivity_uV_per_K : float [uV K-1]
-        Common practice for type T; ITS-90 gives 40.27 at 20 degC.
+        Of "constant", voltage per kelvin. Common practice for type T; ITS-90 gives 40.27 at
+        20 degC.
 
     Returns
     -------

@@ -5,6 +5,17 @@ from itertools import pairwise
 import numpy as np
 import pandas as pd
 
+from sapflux.correction.nights import (
+    in_nights,
+    installations_in,
+    last_window,
+    nights_of,
+    window_means,
+    window_middle,
+    window_records,
+)
+from sapflux.physics.atmosphere import PA_PER_KPA
+
 # Columns that every table of nights has, around its own; their types hold for no rows too.
 KEYS = {
     "probe": object,
@@ -20,6 +31,70 @@ def no_rows(*own):
     """A table of nights without rows; `own` names its columns of numbers."""
     types = KEYS | dict.fromkeys(own, np.float64) | VERDICT
     return pd.DataFrame({name: pd.Series(dtype=kind) for name, kind in types.items()})
+
+
+def candidates(
+    record,
+    installation,
+    solar_elevation,
+    solar_time,
+    vapour_pressure_deficit,
+    choose,
+    own,
+    *,
+    averaging_h,
+    least_records_share,
+    highest_deficit_kPa,
+    highest_variation=np.inf,
+):
+    """One row a probe, point, installation and night of a block: a mean of its record.
+
+    record : DataArray (probe, point, time), in the unit of the first of the columns `own`; `own`
+    may also name mean_deficit_kPa [kPa] and variation, standard deviation over mean [1];
+    vapour_pressure_deficit : (time) [Pa] or None;
+    choose : function (mean, variation, mean_deficit, last) -> (window, accepted), with the first
+    two (probe, point, night, window) and the third (night, window), NaN where too few records;
+    last : (night) window before sunrise; both results (probe, point, night).
+    """
+    nights = nights_of(record["time"].values, solar_elevation.values, solar_time.values)
+    values = in_nights(record.values, nights, np.nan)
+    numbers = in_nights(laid_on(record, installation), nights, -1)
+    if vapour_pressure_deficit is None:
+        deficit = np.full(record.sizes["time"], np.nan)
+    else:
+        deficit = vapour_pressure_deficit.values / PA_PER_KPA
+    size = window_records(nights, averaging_h)
+    last = last_window(nights, size)
+    air = window_means(in_nights(deficit, nights, np.nan), nights, size, least_records_share)
+    parts = []
+    for current in installations_in(numbers):
+        seen = np.where((numbers == current[..., None])[:, None], values, np.nan)
+        signal = window_means(seen, nights, size, least_records_share)
+        with np.errstate(divide="ignore", invalid="ignore"):
+            variation = signal.deviation / np.abs(signal.mean)
+        window, accepted = choose(signal.mean, variation, air.mean, last)
+        mean = chosen(signal.mean, window)
+        middle = window_middle(nights, window, size)
+        columns = {
+            "time": np.where(np.isfinite(mean), middle, np.datetime64("NaT", "ns")),
+            own[0]: mean,
+            "mean_deficit_kPa": chosen(air.mean, window),
+            "variation": chosen(variation, window),
+            "records": chosen(signal.count, window),
+            "accepted": accepted,
+            "night_records": np.isfinite(seen).sum(axis=-1),
+            "long_enough": nights.length >= size,
+        }
+        rows = night_rows(record, current, nights, columns)
+        rows["reason"] = reasons(rows, own[0], averaging_h, highest_deficit_kPa, highest_variation)
+        parts.append(rows[[*KEYS, *own, *VERDICT]])
+    return pd.concat(parts, ignore_index=True) if parts else no_rows(*own)
+
+
+def chosen(values, window):
+    """(..., night) of (..., night, window): the window numbered for each night."""
+    values = np.broadcast_to(values, (*window.shape, values.shape[-1]))
+    return np.take_along_axis(values, window[..., None], axis=-1)[..., 0]
 
 
 def night_rows(record, current, nights, columns):
@@ -69,6 +144,31 @@ def same_key(rows):
     cuts = [0, *(np.flatnonzero(changes) + 1).tolist(), len(rows)]
     for first, last in pairwise(cuts):
         yield (*(key[first] for key in keys), slice(first, last))
+
+
+def lines_of(rows, record, numbers):
+    """Yield ((row, column), where, slice) of each run of rows with the same key in the block.
+
+    rows : as for `same_key`; record : DataArray (probe, point, time) of the block; numbers :
+    (probe, time) installation. Row and column are the places of the key's probe and point;
+    where : (time) the records of its installation, of which there is one at least.
+    """
+    probes = {str(name): row for row, name in enumerate(record["probe"].values)}
+    points = {int(number): column for column, number in enumerate(record["point"].values)}
+    for probe, point, number, own in same_key(rows):
+        if probe in probes and point in points:
+            where = numbers[probes[probe]] == number
+            if where.any():
+                yield (probes[probe], points[point]), where, own
+
+
+def wanting(values, record, numbers):
+    """Where `values` (probe, point, time) are NaN though a probe is installed or has a record.
+
+    record, numbers : as for `lines_of`. DataArray of bool.
+    """
+    known = (numbers >= 0)[:, None, :] | np.isfinite(record.values)
+    return record.copy(data=np.isnan(values) & known)
 
 
 def reasons(rows, value, averaging_h, highest_deficit_kPa, highest_variation=np.inf):

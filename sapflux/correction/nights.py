@@ -11,6 +11,12 @@ import numpy as np
 
 SECOND_NS = 1_000_000_000
 DAY_NS = 86_400 * SECOND_NS
+# The sun is up while its centre stands above this. Source: common practice.
+HORIZON_DEG = 0.0
+# A night ends within a solar day of the noon before it; an hour for the equation of time.
+REACH_S = 25 * 3600.0
+# A share of the records may miss a whole number of them by a rounding.
+ROUNDING = 1e-9
 
 
 @dataclass(frozen=True)
@@ -45,6 +51,11 @@ class WindowMeans:
     count: np.ndarray
 
 
+def reach_s(_settings):
+    """How far [s] a stage looks from the start of a night: to the end of it, whatever is set."""
+    return REACH_S
+
+
 def nights_of(time, solar_elevation, solar_time):
     """The nights of a block.
 
@@ -57,7 +68,7 @@ def nights_of(time, solar_elevation, solar_time):
     steps = np.diff(stamps)
     if (steps != steps[:1]).any():
         raise ValueError("the records do not stand at one regular interval")
-    at = np.flatnonzero((solar_elevation < 0) & (solar_time < 12))
+    at = np.flatnonzero((solar_elevation < HORIZON_DEG) & (solar_time < 12))
     if not at.size or not steps.size:
         none = np.empty(0, dtype=np.int64)
         moments = none.astype("datetime64[ns]")
@@ -109,7 +120,7 @@ def window_means(values, nights, records, least_records):
     centre = total / np.maximum(number, 1)
     departure = np.where(there, values - centre, 0.0)
     count = _moving_sum(there, records)
-    enough = count >= max(1, int(np.ceil(least_records * records - 1e-9)))
+    enough = count >= max(1, int(np.ceil(least_records * records - ROUNDING)))
     enough &= np.arange(windows) + records <= nights.length[:, None]
     size = np.where(enough, count, 1)
     mean = _moving_sum(departure, records) / size

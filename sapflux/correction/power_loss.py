@@ -2,8 +2,9 @@
 
 import numpy as np
 
-from sapflux.correction.order import stages_before
 from sapflux.stage import stage
+
+MINUTE_NS, HOUR_NS = 60e9, 3600e9
 
 
 def _reach_s(settings):
@@ -15,7 +16,6 @@ def _reach_s(settings):
     chain="heat_dissipation",
     flags=("heater_failure", "heater_recovery"),
     reach_s=_reach_s,
-    after=stages_before("heat_dissipation", "screen_power_loss"),
     limits={
         "smallest_difference_K": (-5.0, 10.0),
         "least_heater_V": (0.0, 30.0),
@@ -80,8 +80,8 @@ def screen_power_loss(
     failure, recovery = np.zeros((2, *off.shape), dtype=bool)
     rows = off.values.any(axis=-1)  # most probes have no outage in a block
     before, after = _since_and_until(off.values[rows], stamps)
-    failure[rows] = after <= margin_min * 60e9
-    recovery[rows] = (before <= recovery_h * 3600e9) & ~failure[rows]
+    failure[rows] = after <= margin_min * MINUTE_NS
+    recovery[rows] = (before <= recovery_h * HOUR_NS) & ~failure[rows]
     return {
         "heater_failure": off.copy(data=failure),
         "heater_recovery": off.copy(data=recovery),

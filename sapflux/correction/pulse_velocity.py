@@ -2,7 +2,6 @@
 
 import xarray as xr
 
-from sapflux.correction.order import stages_before
 from sapflux.physics import heat_pulse
 from sapflux.stage import stage
 
@@ -11,7 +10,6 @@ from sapflux.stage import stage
     chain="heat_ratio",
     makes="heat_pulse_velocity",
     flags="no_wood_sample",
-    after=stages_before("heat_ratio", "heat_pulse_velocity"),
 )
 def heat_pulse_velocity(
     log_heat_ratio, thermal_diffusivity, spacing_downstream, spacing_upstream, /

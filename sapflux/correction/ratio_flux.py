@@ -2,7 +2,6 @@
 
 import xarray as xr
 
-from sapflux.correction.order import stages_before
 from sapflux.physics import wood
 from sapflux.stage import stage
 
@@ -11,7 +10,6 @@ from sapflux.stage import stage
     chain="heat_ratio",
     makes="flux_density",
     flags="no_wood_sample",
-    after=stages_before("heat_ratio", "flux_density"),
 )
 def flux_density(heat_pulse_velocity, dry_density, water_content, /):
     """Sap flux density behind a heat pulse velocity.

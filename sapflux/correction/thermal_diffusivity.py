@@ -2,7 +2,6 @@
 
 from typing import Literal
 
-from sapflux.correction.order import stages_before
 from sapflux.physics import wood
 from sapflux.stage import stage
 
@@ -12,7 +11,6 @@ from sapflux.stage import stage
     makes="thermal_diffusivity",
     flags="no_wood_sample",
     method_needs={"given": ("given_diffusivity",), "wood": ("dry_density", "water_content")},
-    after=stages_before("heat_ratio", "thermal_diffusivity"),
 )
 def thermal_diffusivity(
     given_diffusivity=None,
@@ -37,7 +35,8 @@ def thermal_diffusivity(
     water_content : (probe) [1]
         Water mass over dry mass.
     method : text
-        "given" alone, from "wood" alone, or as given and from wood where none is given.
+        "given" alone, from "wood" alone, or as given and from wood where none is given. The
+        default takes a measured value before a worked out one. Own judgement.
 
     Returns
     -------

@@ -5,7 +5,6 @@ from typing import Literal
 import numpy as np
 import xarray as xr
 
-from sapflux.correction.order import stages_before
 from sapflux.physics import heat_pulse
 from sapflux.stage import stage
 
@@ -14,7 +13,6 @@ from sapflux.stage import stage
     chain="heat_ratio",
     makes="heat_pulse_velocity",
     flags=("beyond_wound_limit", "no_wound_width"),
-    after=stages_before("heat_ratio", "wound"),
     limits={"highest_velocity_cm_h": (5.0, 40.0)},
 )
 def wound(
@@ -39,7 +37,7 @@ def wound(
         Of the wounded wood across the needles; may change with time. 0.1 mm changes the result
         by 2 to 4 %.
     method : text
-        "published": the cubic of the published table.
+        "published": the cubic of the published table, the only one so far.
     highest_velocity_cm_h : float [cm h-1]
         Highest apparent velocity that is corrected: beyond it the cubic runs away.
         Common practice.
@@ -60,7 +58,7 @@ def wound(
     # The cubic of the smallest velocity tells where the width is one that the table covers.
     covered = xr.apply_ufunc(heat_pulse.wound_velocity, xr.zeros_like(wound_width), wound_width)
     speed = np.abs(heat_pulse_velocity) / heat_pulse.CM_PER_HOUR
-    beyond = speed > highest_velocity_cm_h * (1.0 + 1e-12)
+    beyond = speed > highest_velocity_cm_h * heat_pulse.ROUNDED_UP
     missing = covered.isnull().broadcast_like(heat_pulse_velocity).transpose(*corrected.dims)
     return {
         "heat_pulse_velocity": corrected.where(~beyond),

@@ -3,34 +3,24 @@
 from typing import Literal
 
 import numpy as np
-import pandas as pd
 
 from sapflux.correction.night_table import (
+    candidates,
     laid_on,
-    night_rows,
+    lines_of,
     no_rows,
-    reasons,
     same_key,
+    wanting,
     without_silent,
 )
-from sapflux.correction.nights import (
-    DAY_NS,
-    in_nights,
-    installations_in,
-    nights_of,
-    window_means,
-    window_middle,
-    window_records,
-)
-from sapflux.correction.order import stages_before
+from sapflux.correction.nights import DAY_NS, reach_s
 from sapflux.schema import RECORD
 from sapflux.stage import stage
 
-PA_PER_KPA = 1000.0
 COLUMNS = ("difference_K", "mean_deficit_kPa", "variation")
 
 
-def summarise_nights(
+def zero_flow_candidates(
     heated_difference,
     installation,
     solar_elevation,
@@ -51,51 +41,32 @@ def summarise_nights(
     "quiet_nights" the highest of those windows that meet the conditions, or the highest of all,
     not accepted, where none does.
     """
-    heated = heated_difference.transpose(*RECORD)
-    nights = nights_of(heated["time"].values, solar_elevation.values, solar_time.values)
-    values = in_nights(heated.values, nights, np.nan)
-    numbers = in_nights(laid_on(heated, installation), nights, -1)
-    if vapour_pressure_deficit is None:
-        deficit = np.full(heated.sizes["time"], np.nan)
-    else:
-        deficit = vapour_pressure_deficit.values / PA_PER_KPA
-    records = window_records(nights, averaging_h)
-    air = window_means(in_nights(deficit, nights, np.nan), nights, records, least_records_share)
-    parts = []
-    for current in installations_in(numbers):
-        own = np.where((numbers == current[..., None])[:, None], values, np.nan)
-        signal = window_means(own, nights, records, least_records_share)
-        with np.errstate(divide="ignore", invalid="ignore"):
-            variation = signal.deviation / np.abs(signal.mean)
-        possible = np.isfinite(signal.mean)
+
+    def highest(mean, variation, mean_deficit, _last):
+        meets = possible = np.isfinite(mean)
         if method == "quiet_nights":
-            meets = possible & (air.mean <= highest_deficit_kPa) & (variation <= highest_variation)
-        else:
-            meets = possible
+            quiet = (mean_deficit <= highest_deficit_kPa) & (variation <= highest_variation)
+            meets = possible & quiet
         accepted = meets.any(axis=-1)
         pool = np.where(accepted[..., None], meets, possible)
-        pick = np.argmax(np.where(pool, signal.mean, -np.inf), axis=-1)[..., None]
-        found = possible.any(axis=-1)
-        middle = window_middle(nights, pick[..., 0], records)
-        columns = {
-            "time": np.where(found, middle, np.datetime64("NaT", "ns")),
-            "difference_K": _picked(signal.mean, pick),
-            "mean_deficit_kPa": _picked(np.broadcast_to(air.mean, signal.mean.shape), pick),
-            "variation": _picked(variation, pick),
-            "records": _picked(signal.count, pick),
-            "accepted": accepted,
-            "night_records": np.isfinite(own).sum(axis=-1),
-            "long_enough": nights.length >= records,
-        }
-        rows = night_rows(heated, current, nights, columns)
-        rows["reason"] = reasons(
-            rows, "difference_K", averaging_h, highest_deficit_kPa, highest_variation
-        )
-        parts.append(rows.drop(columns=["night_records", "long_enough"]))
-    return pd.concat(parts, ignore_index=True) if parts else no_rows(*COLUMNS)
+        return np.argmax(np.where(pool, mean, -np.inf), axis=-1), accepted
+
+    return candidates(
+        heated_difference.transpose(*RECORD),
+        installation,
+        solar_elevation,
+        solar_time,
+        vapour_pressure_deficit,
+        highest,
+        COLUMNS,
+        averaging_h=averaging_h,
+        least_records_share=least_records_share,
+        highest_deficit_kPa=highest_deficit_kPa,
+        highest_variation=highest_variation,
+    )
 
 
-def fit_nights(rows, /, *, method, window_d):
+def fit_baseline(rows, /, *, method, window_d):
     """The table of nights with `baseline_K`, the value of the baseline at each accepted night.
 
     It is `difference_K`, and by "moving_window" the highest `difference_K` of the accepted nights
@@ -117,12 +88,10 @@ def fit_nights(rows, /, *, method, window_d):
     makes="zero_flow_difference",
     flags="no_baseline",
     table="zero_flow_nights",
-    summarise=summarise_nights,
-    fit=fit_nights,
-    # A night ends within a solar day of the noon before it; an hour for the equation of time.
-    reach_s=lambda settings: 25 * 3600.0,
+    summarise=zero_flow_candidates,
+    fit=fit_baseline,
+    reach_s=reach_s,
     method_needs={"quiet_nights": ("vapour_pressure_deficit",)},
-    after=stages_before("heat_dissipation", "zero_flow_difference"),
     limits={
         "averaging_h": (0.25, 6.0),
         "least_records_share": (0.1, 1.0),
@@ -175,7 +144,8 @@ def zero_flow_difference(
     installation : (probe, time) [1]
         The baseline never reaches across it.
     method : text
-        Which nights count.
+        Which nights count, see above. The default is the one that allows for flow at night.
+        Own judgement.
     averaging_h : float [h]
         Length of the mean. Source: Oishi et al. (2008).
     least_records_share : float [1]
@@ -210,33 +180,26 @@ def zero_flow_difference(
     nights = zero_flow_nights[np.isfinite(zero_flow_nights["baseline_K"].to_numpy(dtype=float))]
     knots = nights["time"].to_numpy().astype("datetime64[ns]").astype(np.int64)
     values = nights["baseline_K"].to_numpy(dtype=float)
-    rows = {str(name): row for row, name in enumerate(heated["probe"].values)}
-    columns = {int(number): column for column, number in enumerate(heated["point"].values)}
-    for probe, point, number, own in same_key(nights):
-        if probe not in rows or point not in columns:
-            continue
-        row, column = rows[probe], columns[point]
-        here = numbers[row] == number
-        if here.any():
-            line = bridged(stamps[here], knots[own], values[own], farthest_d, widest_d)
-            baseline[row, column, here] = line
-    absent = np.isnan(baseline)
-    known = (numbers >= 0)[:, None, :] | np.isfinite(heated.values)
+    for place, here, own in lines_of(nights, heated, numbers):
+        line = baseline_line(stamps[here], knots[own], values[own], farthest_d, widest_d)
+        baseline[place][here] = line
     return {
         "zero_flow_difference": heated.copy(data=baseline),
-        "no_baseline": heated.copy(data=absent & known),
+        "no_baseline": wanting(baseline, heated, numbers),
     }
 
 
-def bridged(stamps, knots, values, farthest_d, widest_d):
-    """Values at `stamps`, linear between `knots`; constant near the ends of a bridged span.
+def baseline_line(stamps, knots, values, farthest_d, widest_d):
+    """The baseline at `stamps`: linear between nights, held constant near the ends of a span.
 
-    stamps, knots : ascending [ns]; values : at the knots. NaN further than `farthest_d` from the
-    nearest knot where the knots either side are over `widest_d` apart, or there is but one.
+    stamps : of records, knots : of nights, both ascending [ns]; values : at the knots. NaN
+    further than `farthest_d` from the nearest knot where the knots either side are over
+    `widest_d` apart, or there is but one. Nights are few and days apart, and the line holds
+    beyond its last; that is what tells it from the filling of short gaps in a record.
 
     >>> day = DAY_NS
     >>> stamps, knots = np.array([0, 2, 3, 9]) * day, np.array([1, 3]) * day
-    >>> bridged(stamps, knots, np.array([10.0, 12.0]), 5.0, 42.0)
+    >>> baseline_line(stamps, knots, np.array([10.0, 12.0]), 5.0, 42.0)
     array([10., 11., 12., nan])
     """
     # Only the knots around the stamps matter: a block sees few of the nights.
@@ -261,10 +224,6 @@ def bridged(stamps, knots, values, farthest_d, widest_d):
         near = np.where(first, values[left][span[rest]], values[right][span[rest]])
         line[rest] = np.where(np.minimum(since, until) <= farthest_d * DAY_NS, near, np.nan)
     return line
-
-
-def _picked(values, pick):
-    return np.take_along_axis(values, pick, axis=-1)[..., 0]
 
 
 def _moving_maximum(start, values, half):

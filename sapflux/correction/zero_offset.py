@@ -3,35 +3,26 @@
 from typing import Literal
 
 import numpy as np
-import pandas as pd
 
 from sapflux.correction.night_table import (
+    candidates,
+    chosen,
     laid_on,
-    night_rows,
+    lines_of,
     no_rows,
-    reasons,
     same_key,
+    wanting,
     without_silent,
 )
-from sapflux.correction.nights import (
-    in_nights,
-    installations_in,
-    last_window,
-    nights_of,
-    window_means,
-    window_middle,
-    window_records,
-)
-from sapflux.correction.order import stages_before
+from sapflux.correction.nights import reach_s
 from sapflux.physics.heat_pulse import CM_PER_HOUR
 from sapflux.schema import RECORD
 from sapflux.stage import stage
 
-PA_PER_KPA = 1000.0
 COLUMNS = ("velocity_cm_h", "mean_deficit_kPa")
 
 
-def summarise_nights(
+def zero_offset_candidates(
     heat_pulse_velocity,
     installation,
     solar_elevation,
@@ -48,43 +39,29 @@ def summarise_nights(
 
     Columns as in the table of `zero_offset`, without those of the installation.
     """
-    velocity = heat_pulse_velocity.transpose(*RECORD)
-    nights = nights_of(velocity["time"].values, solar_elevation.values, solar_time.values)
-    values = in_nights(velocity.values / CM_PER_HOUR, nights, np.nan)
-    numbers = in_nights(laid_on(velocity, installation), nights, -1)
-    if vapour_pressure_deficit is None:
-        deficit = np.full(velocity.sizes["time"], np.nan)
-    else:
-        deficit = vapour_pressure_deficit.values / PA_PER_KPA
-    records = window_records(nights, averaging_h)
-    last = last_window(nights, records)
-    air = window_means(in_nights(deficit, nights, np.nan), nights, records, least_records_share)
-    mean_deficit = _at(air.mean, last)
-    quiet = mean_deficit <= highest_deficit_kPa if method == "quiet_nights" else True
-    parts = []
-    for current in installations_in(numbers):
-        own = np.where((numbers == current[..., None])[:, None], values, np.nan)
-        signal = window_means(own, nights, records, least_records_share)
-        mean = _at(signal.mean, last)
-        found = np.isfinite(mean)
-        columns = {
-            "time": np.where(
-                found, window_middle(nights, last, records), np.datetime64("NaT", "ns")
-            ),
-            "velocity_cm_h": mean,
-            "mean_deficit_kPa": mean_deficit,
-            "records": _at(signal.count, last),
-            "accepted": found & quiet,
-            "night_records": np.isfinite(own).sum(axis=-1),
-            "long_enough": nights.length >= records,
-        }
-        rows = night_rows(velocity, current, nights, columns)
-        rows["reason"] = reasons(rows, "velocity_cm_h", averaging_h, highest_deficit_kPa)
-        parts.append(rows.drop(columns=["night_records", "long_enough"]))
-    return pd.concat(parts, ignore_index=True) if parts else no_rows(*COLUMNS)
+
+    def before_sunrise(mean, _variation, mean_deficit, last):
+        window = np.broadcast_to(last, mean.shape[:-1])
+        accepted = np.isfinite(chosen(mean, window))
+        if method == "quiet_nights":
+            accepted &= chosen(mean_deficit, window) <= highest_deficit_kPa
+        return window, accepted
+
+    return candidates(
+        heat_pulse_velocity.transpose(*RECORD) / CM_PER_HOUR,
+        installation,
+        solar_elevation,
+        solar_time,
+        vapour_pressure_deficit,
+        before_sunrise,
+        COLUMNS,
+        averaging_h=averaging_h,
+        least_records_share=least_records_share,
+        highest_deficit_kPa=highest_deficit_kPa,
+    )
 
 
-def fit_offsets(rows, /, *, fewest_nights, widest_spread_cm_h, largest_offset_cm_h):
+def fit_offset(rows, /, *, fewest_nights, widest_spread_cm_h, largest_offset_cm_h):
     """The table of nights with the offset of their installation, the same in all its rows.
 
     offset_cm_h, spread_cm_h : median and interquartile range of the accepted nights; nights :
@@ -133,12 +110,10 @@ def fit_offsets(rows, /, *, fewest_nights, widest_spread_cm_h, largest_offset_cm
     makes="heat_pulse_velocity",
     flags="unusable_offset",
     table="zero_offset_nights",
-    summarise=summarise_nights,
-    fit=fit_offsets,
-    # A night ends within a solar day of the noon before it; an hour for the equation of time.
-    reach_s=lambda settings: 25 * 3600.0,
+    summarise=zero_offset_candidates,
+    fit=fit_offset,
+    reach_s=reach_s,
     method_needs={"quiet_nights": ("vapour_pressure_deficit",)},
-    after=stages_before("heat_ratio", "zero_offset"),
     limits={
         "averaging_h": (0.25, 6.0),
         "least_records_share": (0.1, 1.0),
@@ -182,7 +157,7 @@ def zero_offset(
         Each has its own offset.
     method : text
         "quiet_nights" accepts a night by its vapour pressure deficit; "all_nights" accepts every
-        one, and so assumes that no sap flows before dawn.
+        one, and so assumes that no sap flows before dawn. Own judgement.
     averaging_h : float [h]
         Length of the mean. Common practice: at least 2 h.
     least_records_share : float [1]
@@ -209,22 +184,12 @@ def zero_offset(
     velocity = heat_pulse_velocity.transpose(*RECORD)
     numbers = laid_on(velocity, installation)
     offset = np.full(velocity.shape, np.nan)
-    rows = {str(name): row for row, name in enumerate(velocity["probe"].values)}
-    columns = {int(number): column for column, number in enumerate(velocity["point"].values)}
     usable = zero_offset_nights["usable"].to_numpy(dtype=bool)
     values = zero_offset_nights["offset_cm_h"].to_numpy(dtype=float)
-    for probe, point, number, own in same_key(zero_offset_nights):
-        if usable[own.start] and probe in rows and point in columns:
-            row, column = rows[probe], columns[point]
-            offset[row, column, numbers[row] == number] = values[own.start] * CM_PER_HOUR
-    known = (numbers >= 0)[:, None, :] | np.isfinite(velocity.values)
+    for place, here, own in lines_of(zero_offset_nights, velocity, numbers):
+        if usable[own.start]:
+            offset[place][here] = values[own.start] * CM_PER_HOUR
     return {
         "heat_pulse_velocity": velocity - offset,
-        "unusable_offset": velocity.copy(data=np.isnan(offset) & known),
+        "unusable_offset": wanting(offset, velocity, numbers),
     }
-
-
-def _at(values, window):
-    """(..., night) of (..., night, window): the window numbered for each night."""
-    place = np.broadcast_to(window, values.shape[:-1])[..., None]
-    return np.take_along_axis(values, np.minimum(place, values.shape[-1] - 1), axis=-1)[..., 0]

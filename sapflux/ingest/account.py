@@ -46,8 +46,8 @@ class LogSeries:
     `values` where the cells of one stamp come from several lines, -1 and 0 where no line has one.
     rejected : (file, line, reason, text); displaced : the same of lines counted as duplicate
     because another record is nearer to their step.
-    conflicts : (stamp, log, column, value_1, value_2, file_1, line_1, file_2, line_2), values as
-    text, the first being the owner's.
+    conflicts : (stamp, log, column, value, file, line, other_value, other_file, other_line), values
+    as text, the first being the owner's.
     """
 
     name: str
@@ -69,12 +69,12 @@ def log_series(log_name, files, ranked, columns, interval, merged, outside):
     rank = np.array([index[file.path] for file in ranked], dtype=np.int32)
     paths = [file.path for file in ranked]
     classes = dict(zip(paths, merged.classes, strict=True))
-    source = np.where(merged.source >= 0, rank[merged.source], np.int32(-1))
+    files_of = np.where(merged.source >= 0, rank[merged.source], np.int32(-1))
     conflicts = []
-    for end, column, (file_1, line_1, text_1), (file_2, line_2, text_2) in merged.conflicts:
+    for end, column, (source, line, text), (other, other_line, other_text) in merged.conflicts:
         stamp = np.datetime64(end, "us").astype("M8[s]")
-        lines = (paths[file_1], line_1, paths[file_2], line_2)
-        conflicts.append((stamp, log_name, column, text_1, text_2, *lines))
+        one = (text, paths[source], line)
+        conflicts.append((stamp, log_name, column, *one, other_text, paths[other], other_line))
     sheets = {file.path: file.parsed.sheet for file in files}
     displaced = [
         (
@@ -95,7 +95,7 @@ def log_series(log_name, files, ranked, columns, interval, merged, outside):
         end=merged.end.view("M8[us]").astype("M8[s]"),
         interval_s=interval // clocks.SECOND,
         values=dict(zip(columns, merged.values, strict=True)),
-        file=source.T,
+        file=files_of.T,
         line=merged.line.T,
         withheld=dict(zip(columns, merged.withheld, strict=True)),
         files=tuple(_record(file, classes[file.path], outside[file.path]) for file in files),

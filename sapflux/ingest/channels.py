@@ -18,6 +18,16 @@ def within(site, channel, end, interval_s):
     return inside
 
 
+def excluded(site, kind, name, end, interval_s):
+    """(time) bool: records that an exclusion of this thing touches. end : [UTC]."""
+    out = np.zeros(len(end), dtype=bool)
+    start = end - np.timedelta64(interval_s, "s")
+    for row in site.table("exclusions"):
+        if (row.kind, row.id) == (kind, name):
+            out |= (end > site.utc(row.from_)) & (start < site.utc(row.to))
+    return out
+
+
 def values_of(channel, series, site):
     """The records of one channel, in SI, from its own span of time.
 
@@ -38,8 +48,8 @@ def values_of(channel, series, site):
 def single_series(site, logs, kind, quantity, thing=None):
     """One quantity of one thing as a `Series`, put together from all its channels.
 
-    Values outside the plausible range of the schema become NaN. None where the site has no such
-    channel, or its channels have no record.
+    Values that are excluded, or outside the plausible range of the schema, become NaN. None where
+    the site has no such channel, or its channels have no record.
     """
     parts = []
     for channel in site.table("channels"):
@@ -50,7 +60,10 @@ def single_series(site, logs, kind, quantity, thing=None):
         series = logs[channel.log]
         rows, values, _ = values_of(channel, series, site)
         if len(rows):
-            parts.append((series.end[rows], values, series.interval_s))
+            end = series.end[rows]
+            out = excluded(site, "log", channel.log, end, series.interval_s)
+            out |= excluded(site, kind, channel.id, end, series.interval_s)
+            parts.append((end, np.where(out, np.nan, values), series.interval_s))
     if not parts:
         return None
     end = np.concatenate([part[0] for part in parts])

@@ -5,9 +5,11 @@ import xarray as xr
 
 from sapflux import quality, schema
 from sapflux.errors import DataError, Fault
-from sapflux.ingest.channels import single_series, values_of, within
+from sapflux.ingest.channels import excluded, single_series, values_of, within
 from sapflux.ingest.series import grid, on_records, place
 from sapflux.site.installations import installation_numbers
+
+METHODS = ("heat_dissipation", "heat_ratio")  # unheated pairs serve these, and have no chain
 
 # Series of a whole logger or tree that a stage may ask for beside the probe's own signal.
 OWNER_OF = {"heater_voltage": "log", "heater_state": "log", "stem_temperature": "tree"}
@@ -28,7 +30,7 @@ def measured_cubes(site, logs):
         if channel.kind != "probe" or channel.log not in logs:
             continue
         method = _method(site, channel.id)
-        if method and channel.quantity in schema.SIGNALS[method]:
+        if method in METHODS and channel.quantity in schema.SIGNALS[method]:
             key = (method, logs[channel.log].interval_s)
             groups.setdefault(key, []).append(channel)
     return {key: _cube(site, logs, key, channels) for key, channels in sorted(groups.items())}
@@ -95,13 +97,13 @@ def _cube(site, logs, key, channels):
         conflicting[where] |= withheld
         with np.errstate(invalid="ignore"):
             beyond[where] |= (values < row.low) | (values > row.high)
-    excluded = _excluded(site, probes, channels, time, interval_s)[:, None, :]
+    taken_out = _excluded(site, probes, channels, time, interval_s)[:, None, :]
     outside = installation_numbers(site, probes, time, interval_s) < 0
     bits = quality.bits(
         no_record=~expected | absent,
         conflicting=conflicting,
         out_of_range=beyond,
-        excluded=np.broadcast_to(excluded, shape),
+        excluded=np.broadcast_to(taken_out, shape),
         not_installed=np.broadcast_to(outside[:, None, :], shape),
     )
     variables = {name: (schema.RECORD, values) for name, values in signals.items()}
@@ -115,27 +117,34 @@ def _cube(site, logs, key, channels):
     return xr.Dataset(variables, coords, attrs={"method": method, "interval_s": interval_s})
 
 
+def answered_records(site, logs, cube):
+    """(probe, point, time) bool: records of the cube that a channel of its interval covers."""
+    interval_s = int(cube.attrs["interval_s"])
+    end = cube["time"].values.astype("datetime64[s]")
+    probes = [str(name) for name in cube["probe"].values]
+    covered = np.zeros((len(probes), cube.sizes["point"], len(end)), dtype=bool)
+    for channel in site.table("channels"):
+        own = channel.kind == "probe" and channel.id in probes and channel.log in logs
+        signal = channel.quantity in schema.SIGNALS[cube.attrs["method"]]
+        if own and signal and logs[channel.log].interval_s == interval_s:
+            where = (probes.index(channel.id), channel.point - 1)
+            covered[where] |= within(site, channel, end, interval_s)
+    return covered
+
+
 def _excluded(site, probes, channels, time, interval_s):
     """(probe, time) where `exclusions.csv` takes the records out."""
     out = np.zeros((len(probes), len(time)), dtype=bool)
     trees = {p.probe: p.tree for p in site.table("probes")}
     stands = {t.tree: t.stand for t in site.table("trees")}
-    logs_of = {}
-    for channel in channels:
-        logs_of.setdefault(channel.id, set()).add(channel.log)
-    start = time - np.timedelta64(interval_s, "s")
-    for row in site.table("exclusions"):
-        overlaps = (time > site.utc(row.from_)) & (start < site.utc(row.to))
-        for index, probe in enumerate(probes):
-            tree = trees.get(probe)
-            names = {
-                "probe": {probe},
-                "tree": {tree},
-                "log": logs_of.get(probe, set()),
-                "stand": {stands.get(tree)},
-            }
-            if row.id in names[row.kind]:
-                out[index] |= overlaps
+    for index, probe in enumerate(probes):
+        tree = trees.get(probe)
+        for kind, name in [("probe", probe), ("tree", tree), ("stand", stands.get(tree))]:
+            out[index] |= excluded(site, kind, name, time, interval_s)
+        for channel in channels:
+            if channel.id == probe:
+                on_log = within(site, channel, time, interval_s)
+                out[index] |= on_log & excluded(site, "log", channel.log, time, interval_s)
     return out
 
 

@@ -19,6 +19,10 @@ import numpy as np
 
 from sapflux.ingest.clock import DAY, read_civil
 
+# A record follows another without a gap if it is no more than this many intervals later: one step
+# and the jitter of a stamp, short of a missing record (two). Source: own judgement.
+LONGEST_STEP = 1.5
+
 
 @dataclass
 class _Run:
@@ -149,4 +153,4 @@ def _is_first_pass(run, known, clear, interval):
         return True
     if any(0 < start - local < run.shift for local, _ in known.first):
         return True
-    return not 0 < run.after <= 1.5 * interval
+    return not 0 < run.after <= LONGEST_STEP * interval

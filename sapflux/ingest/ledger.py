@@ -5,7 +5,7 @@ import pandas as pd
 COUNTS = ["lines", "header", "kept", "duplicate", "conflicting", "rejected", "blank", "outside"]
 LEDGER = ["file", "sha256", *COUNTS]
 REJECTED = ["file", "line", "reason", "text"]
-VALUES = ["value_1", "value_2", "file_1", "line_1", "file_2", "line_2"]
+VALUES = ["value", "file", "line", "other_value", "other_file", "other_line"]
 CONFLICTS = ["stamp", "log", "column", *VALUES]
 
 
@@ -20,14 +20,11 @@ def ledger_table(*series):
 
 
 def rejected_table(*series):
-    """One row a line that gave no data: unreadable, or another record is nearer to its step.
-
-    Text that a spreadsheet would take for a formula gets an apostrophe in front.
-    """
+    """One row a line that gave no data: unreadable, or another record is nearer to its step."""
     rows = [
-        [file, line, reason, guarded(text)]
+        list(row)  # file, line, reason, text
         for one in series
-        for file, line, reason, text in (*one.rejected, *one.displaced)
+        for row in (*one.rejected, *one.displaced)
     ]
     return _table(rows, REJECTED, ["file", "line"])
 
@@ -35,16 +32,7 @@ def rejected_table(*series):
 def conflicts_table(*series):
     """One row a cell that two downloads give differently, with both values as they stand there."""
     rows = [list(row) for one in series for row in one.conflicts]
-    return _table(rows, CONFLICTS, ["file_1", "line_1", "file_2", "line_2", "column"])
-
-
-def guarded(text):
-    """Text that no spreadsheet takes for a formula.
-
-    >>> guarded("=1+1"), guarded("plain")
-    ("'=1+1", 'plain')
-    """
-    return f"'{text}" if text.startswith(("=", "+", "-", "@")) else text
+    return _table(rows, CONFLICTS, ["file", "line", "other_file", "other_line", "column"])
 
 
 def _table(rows, columns, order):

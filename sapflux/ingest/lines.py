@@ -14,6 +14,11 @@ import numpy as np
 
 from sapflux.ingest.text import line_bounds, shown, split_line
 
+# Lines above a last line without line end that show how many decimals the logger prints. A few may
+# all have fewer by chance, if it leaves out zeros at the end; many would reach back to another
+# program of the logger. Source: own judgement.
+LINES_THAT_SHOW_DECIMALS = 20
+
 HEADER, BLANK, REGULAR, IRREGULAR, REJECTED = range(5)
 
 
@@ -226,12 +231,13 @@ def _reject_torn_end(sheet, layout):
     """Reject a last line without line end whose last number has lost decimals.
 
     It can be cut in the middle of a number and still have every field. A number with fewer decimals
-    than all of the 20 lines above is taken for cut.
+    than all of the lines above it (LINES_THAT_SHOW_DECIMALS of them) is taken for cut.
     """
     last = len(sheet.kind) - 1
     if sheet.kind[last] != REGULAR:
         return
-    above = np.flatnonzero(sheet.kind[max(0, last - 20) : last] == REGULAR) + max(0, last - 20)
+    begin = max(0, last - LINES_THAT_SHOW_DECIMALS)
+    above = np.flatnonzero(sheet.kind[begin:last] == REGULAR) + begin
     cells = [sheet.line(at).rsplit(layout.separator.encode(), 1)[-1] for at in above.tolist()]
     cell = sheet.line(last).rsplit(layout.separator.encode(), 1)[-1]
     printed = [_decimals(c, layout) for c in cells]

@@ -17,6 +17,8 @@ from sapflux.ingest.parse import parse
 from sapflux.ingest.stamps import has_offset
 from sapflux.ingest.text import as_utf8, line_bounds, shown, squeezed
 
+HEAD_BYTES = 64 * 1024  # of a file, for its names line alone: a thousand columns fit in it
+
 
 @dataclass(frozen=True)
 class _File:
@@ -52,12 +54,19 @@ def match_files(site, log_name):
 
 
 def read_header(path, layout):
-    """Column names of a file's first names line. DataError where it has none."""
+    """Column names of a file's first names line. DataError where it has none.
+
+    No more than the file's first HEAD_BYTES are read; a line that they cut is left out.
+    """
     where = Path(path).name
-    data = _text(_bytes(path, where), layout, where)
+    raw = _bytes(path, where, HEAD_BYTES)
+    data = _text(raw, layout, where)
     if not data.strip(b"\0 \t\r\n"):
         raise DataError(Fault(where, "the file is empty", "Remove it, or download it again."))
-    start, stop, _ = line_bounds(data)
+    start, stop, open_end = line_bounds(data)
+    cut = len(raw) == HEAD_BYTES
+    if cut and open_end:
+        start, stop = start[:-1], stop[:-1]
     for at in range(len(start)):
         names = text_lines.names_in(data[start[at] : stop[at]], layout)
         if names is not None:
@@ -68,7 +77,7 @@ def read_header(path, layout):
             return names
     at = layout.names_line - 1
     line = data[start[at] : stop[at]].decode("utf-8", "replace") if at < len(start) else ""
-    raise DataError(_no_names(where, layout, line))
+    raise DataError(_no_names(where, layout, line, cut))
 
 
 def read_log(site, log_name):
@@ -98,9 +107,11 @@ def read_log(site, log_name):
     return log_series(log_name, files, ranked, columns, interval, merged, outside)
 
 
-def _bytes(path, where):
+def _bytes(path, where, most=-1):
+    """The first `most` bytes of a file, or all."""
     try:
-        return Path(path).read_bytes()
+        with Path(path).open("rb") as file:
+            return file.read(most)
     except OSError as error:
         what = f"the file cannot be read ({error.strerror})"
         raise DataError(
@@ -117,11 +128,12 @@ def _text(raw, layout, where):
     return squeezed(data) if layout.separator == " " else data
 
 
-def _no_names(where, layout, line):
+def _no_names(where, layout, line, cut=False):
     expected = ", ".join(sorted(text_lines.required_names(layout)))
+    among = f"no line of its first {HEAD_BYTES // 1024} kB" if cut else "no line"
     return Fault(
         where,
-        f"no line holds the column names {expected}; line {layout.names_line} is '{shown(line)}'",
+        f"{among} holds the column names {expected}; line {layout.names_line} is '{shown(line)}'",
         "Correct 'time_columns', 'delimiter' or 'encoding' of its layout.",
     )
 

@@ -16,8 +16,9 @@ import pandas as pd
 from sapflux.ingest import lines as text_lines
 from sapflux.ingest import stamps as text_stamps
 from sapflux.ingest.lines import IRREGULAR, REGULAR, REJECTED
-from sapflux.ingest.stamps import UNREAD, YEARS
+from sapflux.ingest.stamps import UNREAD
 from sapflux.ingest.text import shown, split_line
+from sapflux.site.config import YEARS
 
 INFINITE = {"INF", "INFINITY"}  # what loggers write for over-range: no value
 FEW = 16  # lines read one by one rather than halved again

@@ -4,7 +4,6 @@ from dataclasses import dataclass
 
 import numpy as np
 
-
 # Share of a record's values that must be there for their mean to stand for it: own judgement.
 # Half of a half hour of weather is still that half hour's weather; a single value may be a gust.
 LEAST_SHARE = 0.5

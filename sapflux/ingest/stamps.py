@@ -11,11 +11,10 @@ import numpy as np
 import pandas as pd
 
 from sapflux.ingest.clock import DAY, SECOND
+from sapflux.site.config import YEAR_DAY_HHMM, YEARS
 
 UNREAD = np.iinfo(np.int64).min
-YEARS = (1990, 2100)  # stamps outside come from a clock that lost its date, or from torn text
 WIDTHS = {"Y": 4, "m": 2, "d": 2, "H": 2, "M": 2, "S": 2, "j": 3, "y": 2}
-DAY_OF_YEAR_FORMAT = "year_day_hhmm"
 
 
 def has_offset(layout):
@@ -37,7 +36,7 @@ def stamps_of(sheet, lines, positions, layout):
     """
     cells = [_bounds(sheet, lines, position, layout) for position in positions]
     array = np.frombuffer(sheet.data, dtype=np.uint8)
-    if layout.time_format == DAY_OF_YEAR_FORMAT:
+    if layout.time_format == YEAR_DAY_HHMM:
         stamps = _day_of_year([_integers(array, *cell) for cell in cells])
     else:
         stamps = _fixed_width(array, cells, layout.time_format)
@@ -56,7 +55,7 @@ def from_texts(texts, layout):
     codes, unique = pd.factorize(np.array(texts, dtype=object))
     known = np.full(len(unique), UNREAD, dtype=np.int64)
     style = layout.time_format
-    if style != DAY_OF_YEAR_FORMAT and not style.startswith("%Y") and len(unique) > 20:
+    if style != YEAR_DAY_HHMM and not style.startswith("%Y") and len(unique) > 20:
         known = _by_pandas(unique, style)
     for at in np.flatnonzero(known == UNREAD).tolist():
         known[at] = from_text(unique[at], layout)
@@ -78,7 +77,7 @@ def _by_pandas(texts, style):
 def from_text(text, layout):
     """Stamp of one text (the time columns joined by one blank), UNREAD if it does not read."""
     style = layout.time_format
-    if style == DAY_OF_YEAR_FORMAT:
+    if style == YEAR_DAY_HHMM:
         try:
             numbers = [float(part) for part in text.split()]
         except ValueError:
@@ -92,23 +91,24 @@ def from_text(text, layout):
     for one in styles:
         read = _strptime(text, one)
         if read is not None:
-            return read
+            return read[0] - read[1]
         midnight = re.sub(r"(?<!\d)24(?=:?00)", "00", text, count=1)
         if midnight != text and "%H" in one:
             read = _strptime(midnight, one)
-            if read is not None and read % DAY == 0:
-                return read + DAY
+            if read is not None and read[0] % DAY == 0:
+                return read[0] + DAY - read[1]
     return UNREAD
 
 
 def _strptime(text, style):
+    """(time as written, its own offset from UTC or 0 without one) in microseconds, or None."""
     try:
         moment = datetime.strptime(text, style)
     except (ValueError, re.error):
         return None
-    if moment.tzinfo is not None:
-        moment = moment.replace(tzinfo=None) - moment.utcoffset()
-    return (moment - datetime(1970, 1, 1)) // timedelta(microseconds=1)
+    microsecond, offset = timedelta(microseconds=1), moment.utcoffset() or timedelta()
+    since = moment.replace(tzinfo=None) - datetime(1970, 1, 1)
+    return since // microsecond, offset // microsecond
 
 
 def _bounds(sheet, lines, position, layout):

@@ -9,6 +9,8 @@ import numpy as np
 
 from sapflux.constants import ZERO_CELSIUS
 
+PA_PER_KPA = 1000.0
+
 
 def saturation_vapour_pressure(temperature):
     """Vapour pressure [Pa] of air saturated over liquid water at `temperature` [K].

@@ -73,19 +73,6 @@ def index_of(flux_density, factor=GENERAL_FACTOR, exponent=GENERAL_EXPONENT):
     return np.copysign((np.abs(flux_density) / factor) ** (1.0 / exponent), flux_density)
 
 
-def difference_of(index, zero_flow):
-    """Heated minus reference needle temperature [K] that a flow index [1] leaves.
-
-    NaN at an index of -1 and below, which no finite difference gives.
-
-    Source: inverse of `flow_index`.
-
-    >>> float(difference_of(0.25, 10.0))
-    8.0
-    """
-    return zero_flow / _positive(1.0 + np.asarray(index, float))
-
-
 def amplification(index, exponent=GENERAL_EXPONENT):
     """Relative change of flux density per relative change of the zero-flow difference [1].
 

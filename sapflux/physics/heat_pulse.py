@@ -30,9 +30,8 @@ NARROWEST_WOUND = 1.7e-3  # m, ends of the published table
 WIDEST_WOUND = 3.0e-3
 # Above this the cubic runs away (at 3.0 mm it turns 60 into 344 cm h-1). Common practice.
 HIGHEST_WOUND_VELOCITY = 40.0 * CM_PER_HOUR
-
-# A fixed number of steps, so that a value never depends on the others in its array.
-STEPS = 8
+# 40 cm h-1 is still 40 where m s-1 have rounded it up.
+ROUNDED_UP = 1.0 + 1e-12
 
 
 def line_source_rise(distance, time, velocity, diffusivity, energy, heat_capacity):
@@ -114,30 +113,9 @@ def wound_velocity(velocity, width):
     """
     b, c, d = _cubic(width)
     speed = np.abs(velocity) / CM_PER_HOUR
-    highest = HIGHEST_WOUND_VELOCITY / CM_PER_HOUR * (1.0 + 1e-12)
+    highest = HIGHEST_WOUND_VELOCITY / CM_PER_HOUR * ROUNDED_UP
     speed = np.where(speed <= highest, speed, np.nan)
     return np.sign(velocity) * (speed * (b + speed * (c + speed * d))) * CM_PER_HOUR
-
-
-def apparent_velocity(velocity, width):
-    """Heat pulse velocity [m s-1] that a probe in a wound of `width` [m] shows at a true one.
-
-    NaN where `wound_velocity` would be.
-
-    Source: inverse of `wound_velocity`, by Newton's method (own derivation).
-
-    >>> round(float(apparent_velocity(16.625 * CM_PER_HOUR, 1.7e-3)) / CM_PER_HOUR, 9)
-    10.0
-    """
-    b, c, d = _cubic(width)
-    target = np.abs(velocity) / CM_PER_HOUR
-    # The cubic rises everywhere; past its turn at -c/(3 d) < 10 it bends upwards only.
-    speed = np.minimum(target / b, 40.0)
-    for _ in range(STEPS):
-        miss = speed * (b + speed * (c + speed * d)) - target
-        speed = speed - miss / (b + speed * (2.0 * c + speed * 3.0 * d))
-    highest = HIGHEST_WOUND_VELOCITY / CM_PER_HOUR * (1.0 + 1e-12)
-    return np.sign(velocity) * np.where(speed <= highest, speed, np.nan) * CM_PER_HOUR
 
 
 def _cubic(width):

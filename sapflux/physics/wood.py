@@ -111,14 +111,3 @@ def flux_density(heat_pulse_velocity, dry_density, water_content):
     """
     factor = conversion_factor(dry_density, water_content)
     return heat_pulse_velocity * factor * WATER_DENSITY
-
-
-def heat_pulse_velocity(flux_density, dry_density, water_content):
-    """Heat pulse velocity [m s-1] of a sap flux density [kg m-2 s-1]; keeps the sign.
-
-    Source: inverse of `flux_density`.
-
-    >>> round(heat_pulse_velocity(flux_density(1e-4, 500.0, 1.0), 500.0, 1.0), 12)
-    0.0001
-    """
-    return flux_density / (conversion_factor(dry_density, water_content) * WATER_DENSITY)

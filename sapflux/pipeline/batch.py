@@ -5,12 +5,14 @@ import traceback
 from concurrent.futures import ProcessPoolExecutor, as_completed
 from dataclasses import dataclass, field
 
-from sapflux.errors import RecipeError, SiteError, UserError
+from sapflux.errors import Fault, RecipeError, SiteError, UserError
 from sapflux.ingest.logs import match_files
 from sapflux.pipeline.api import run_site, summary
 from sapflux.pipeline.plan import check_plan
 from sapflux.pipeline.recipe import load_recipe
 from sapflux.site.load import load_site
+
+CONNECT_S = 10  # seconds to wait for a scheduler
 
 
 @dataclass(frozen=True)
@@ -24,24 +26,52 @@ class Outcome:
     seconds: float = 0.0
 
 
-def run_sites(paths, *, jobs=1, **options):
-    """Run each site and yield its `Outcome`, in the order given, or as they finish with jobs."""
+def run_sites(paths, *, jobs=1, scheduler=None, **options):
+    """Run each site and yield its `Outcome`, in the order given, or as they finish.
+
+    jobs : sites at the same time, each in a process of its own; scheduler : address of a running
+    dask.distributed scheduler whose workers see the same folders, instead of jobs.
+    UserError where the scheduler cannot be used.
+    """
     paths = [str(path) for path in paths]
-    if jobs == 1 or len(paths) == 1:
+    if scheduler:
+        yield from _on_cluster(paths, scheduler, options)
+    elif jobs == 1 or len(paths) == 1:
         for path in paths:
             yield run_one(path, **options)
-        return
-    with ProcessPoolExecutor(max_workers=min(jobs, len(paths))) as pool:
-        waiting = {pool.submit(run_one, path, **options): path for path in paths}
-        for future in as_completed(waiting):
-            error = future.exception()
-            yield (
-                future.result()
-                if error is None
-                else Outcome(
-                    waiting[future], faults=[f"{waiting[future]}: its worker ended: {error!r}"]
-                )
-            )
+    else:
+        with ProcessPoolExecutor(max_workers=min(jobs, len(paths))) as pool:
+            waiting = {pool.submit(run_one, path, **options): path for path in paths}
+            for future in as_completed(waiting):
+                yield _outcome(future, waiting[future])
+
+
+def _on_cluster(paths, address, options):
+    try:
+        from distributed import Client
+        from distributed import as_completed as finished
+    except ImportError:
+        fault = Fault("--scheduler", "the package 'distributed' is not installed",
+                      "Install sapflux[cluster], or use --jobs.")  # fmt: skip
+        raise UserError(fault) from None
+    try:
+        client = Client(address, timeout=CONNECT_S)
+    except (OSError, ValueError) as error:
+        fault = Fault("--scheduler", f"no scheduler answers at {address!r} ({error})",
+                      "Start one, give its address (tcp://host:8786), or use --jobs.")  # fmt: skip
+        raise UserError(fault) from None
+    with client:
+        # The workers load their own files: only paths and outcomes travel.
+        waiting = {client.submit(run_one, path, pure=False, **options): path for path in paths}
+        for future in finished(waiting):
+            yield _outcome(future, waiting[future])
+
+
+def _outcome(future, path):
+    error = future.exception()
+    if error is None:
+        return future.result()
+    return Outcome(path, faults=[f"{path}: its worker ended: {error!r}"])
 
 
 def run_one(path, **options):

@@ -1,6 +1,7 @@
 """What can be told of a site before its data are read: tables, recipe, headers."""
 
 from sapflux.errors import DataError, Fault, SiteError, nearest
+from sapflux.ingest import clock
 from sapflux.ingest.logs import match_files, read_header
 from sapflux.pipeline.notes import notes_of
 from sapflux.pipeline.plan import methods_of, plan_faults
@@ -54,6 +55,7 @@ def _stratum(stand, species, part):
 def header_faults(site):
     """(faults, notes, number of files): whether the logs have the columns the channels name."""
     faults, notes, count = [], [], 0
+    faults += phase_faults(site)
     for name, log in site.logs.items():
         layout = site.layouts[log.layout]
         try:
@@ -86,6 +88,35 @@ def header_faults(site):
         if not layout.long:
             faults += _channel_faults(site, name, known)
     return faults, notes, count
+
+
+def phase_faults(site):
+    """Logs of probes whose whole intervals are not those of the site's standard time."""
+    carried = {c.log for c in site.table("channels") if c.kind == "probe"}
+    for name in sorted(carried & site.logs.keys()):
+        log = site.logs[name]
+        interval_s = round(log.interval_min * 60)
+        shift_s = clock.standard_offset(log.clock) / clock.SECOND
+        off_s = (site.offset.astype(int) - shift_s) % interval_s
+        if off_s:
+            yield Fault(
+                f"{site.folder}/site.toml, [logs.{name}]",
+                f"its whole intervals end {off_s / 60:g} min after those of the site's "
+                f"standard time (utc_offset_h {site.position.utc_offset_h:g})",
+                "Let utc_offset_h and the log's clock differ by whole intervals.",
+            )
+
+
+def unheard_channels(site, logs):
+    """Notes on channels whose column is in no record read: a long table names them by its rows."""
+    notes = []
+    for row, line in zip(site.table("channels"), site.rows_at["channels"], strict=True):
+        if row.log in logs and row.column not in logs[row.log].values:
+            known = logs[row.log].values.keys()
+            hint = nearest(row.column, known) if known else "The log holds no record."
+            notes.append(f"{site.folder}/channels.csv, row {line}: log {row.log!r} has no value of "
+                         f"{row.column!r}. {hint}")  # fmt: skip
+    return notes
 
 
 def _channel_faults(site, log, known):

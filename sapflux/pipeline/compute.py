@@ -3,24 +3,23 @@
 import time as clock
 from dataclasses import dataclass, field
 
-import numpy as np
 import pandas as pd
 import xarray as xr
 
 from sapflux import schema
 from sapflux.errors import DataError, Fault
-from sapflux.ingest.cube import measured_cubes
+from sapflux.ingest.cube import answered_records, measured_cubes
 from sapflux.ingest.logs import read_log
 from sapflux.ingest.weather import weather_series
-from sapflux.pipeline.beside import probe_chain_beside, scaling_beside
-from sapflux.pipeline.check import header_faults
+from sapflux.pipeline.beside import probe_chain_beside
+from sapflux.pipeline.check import header_faults, unheard_channels
 from sapflux.pipeline.execute import BLOCK_DAYS, Chain, fitted_tables, run_blocks
 from sapflux.pipeline.installation_lives import FlagCounts, installation_table
 from sapflux.pipeline.join import Joined, common_grid
 from sapflux.pipeline.notes import notes_of
+from sapflux.pipeline.scale import ground_of, labelled, scale
 from sapflux.pipeline.total_tables import total_tables
 from sapflux.scaling.whole_stands import with_whole_stands
-from sapflux.site import facts
 
 
 @dataclass
@@ -70,18 +69,21 @@ def compute(site, recipe, *, native=False, block_days=BLOCK_DAYS):
             probe_chain_beside(site, cube, weather),
             offset=site.offset,
         )
-        _run_method(chain, joined, found, counts, method, native, block_days)
+        answered = answered_records(site, logs, cube)
+        _run_method(chain, joined, found, counts, answered, native, block_days)
         found.history += [f"{step.line()} at {interval_s} s" for step in chain.steps]
     stopwatch.lap("correct")
-    found.probes = _labelled(site, joined.dataset())
+    found.probes = labelled(site, joined.dataset())
     found.history.append(f"join: {dict(recipe.join)!r} to {step_s} s")
-    _scale(site, recipe, found, weather, block_days)
+    scaled = scale(site, recipe, found.probes, weather, block_days)
+    found.probes, found.trees, found.stand = scaled.probes, scaled.trees, scaled.stand
+    found.evidence |= scaled.tables
+    found.history += [step.line() for step in recipe.chains["scaling"]]
     stopwatch.lap("scale")
     found.tables["installations"] = installation_table(site, counts, found.evidence)
     found.tables |= total_tables(site, recipe, found, weather)
     if found.stand is not None:
-        ground = facts.stand_facts(site, ends[:1])["sapwood_per_ground"].values
-        found.stand = with_whole_stands(found.stand, ground)
+        found.stand = with_whole_stands(found.stand, ground_of(site, ends))
     stopwatch.lap("total")
     found.seconds = stopwatch.seconds
     return found
@@ -99,16 +101,11 @@ def _read_logs(site):
     faults, notes, _ = header_faults(site)
     if faults:
         raise DataError(faults)
-    return {name: read_log(site, name) for name in site.logs}, notes
+    logs = {name: read_log(site, name) for name in site.logs}
+    return logs, notes + unheard_channels(site, logs)
 
 
-def _labelled(site, cube):
-    labels = facts.labels(site, [str(name) for name in cube["probe"].values])
-    coords = {name: ("probe", np.array(values, dtype=str)) for name, values in labels.items()}
-    return cube.assign_coords(coords)
-
-
-def _run_method(chain, joined, found, counts, method, native, block_days):
+def _run_method(chain, joined, found, counts, answered, native, block_days):
     tables = fitted_tables(chain, block_days)
     for name, rows in tables.items():
         known = found.evidence.get(name)
@@ -119,11 +116,17 @@ def _run_method(chain, joined, found, counts, method, native, block_days):
         core = {"time": block.core}
         flux = working.variables["flux_density"].isel(core).transpose(*schema.RECORD)
         bits = working.quality[schema.RECORD].isel(core).transpose(*schema.RECORD)
-        record_ends = chain.ends[block.whole][block.core]
+        here = slice(block.core_first, block.core_last)
         joined.add(
-            chain.cube["probe"].values, flux.values, bits.values, record_ends, chain.interval_s
+            chain.cube["probe"].values,
+            flux.values,
+            bits.values,
+            chain.ends[here],
+            chain.interval_s,
+            answered[..., here],
         )
-        counts.add(chain.cube, working.variables["installation"].isel(core).values, bits.values)
+        installation = working.variables["installation"].isel(core).values
+        counts.add(chain.cube, installation, bits.values, answered[..., here])
         if native:
             kept.append(_native_part(working, bits, core))
     if native:
@@ -133,7 +136,9 @@ def _run_method(chain, joined, found, counts, method, native, block_days):
         for name in chain.cube.data_vars:
             if name != "quality":
                 whole[f"{name}" if name not in whole else f"measured_{name}"] = chain.cube[name]
-        found.native[method, chain.interval_s] = whole.assign_attrs(chain.cube.attrs)
+        found.native[chain.cube.attrs["method"], chain.interval_s] = whole.assign_attrs(
+            chain.cube.attrs
+        )
 
 
 def _native_part(working, bits, core):
@@ -146,50 +151,6 @@ def _native_part(working, bits, core):
         and name not in ("quality", "origin")
     }
     return xr.Dataset({**made, "quality": bits}).drop_attrs()
-
-
-def _scale(site, recipe, found, weather, block_days):
-    """Run the scaling chain and keep what it makes for probes, trees and stands."""
-    steps = recipe.chains["scaling"]
-    chain = Chain(
-        found.probes.drop_vars("quality"),
-        steps,
-        scaling_beside(site, found.probes, weather),
-        spread_flags=False,
-        offset=site.offset,
-    )
-    tables = fitted_tables(chain, block_days)
-    found.evidence |= tables
-    parts = {}
-    for block, working in run_blocks(chain, tables, block_days, ("in_leaf",)):
-        made = {n: working.variables[n] for step in steps for n in step.stage.makes}
-        if "in_leaf" in working.variables:
-            made["in_leaf"] = working.variables["in_leaf"]
-        for name, value in made.items():
-            parts.setdefault(name, []).append(value.isel(time=block.core))
-        for dims, bits in working.quality.items():
-            parts.setdefault(f"quality {dims[0]}", []).append(bits.isel(time=block.core))
-    joined = {name: _along_time(values, found.probes["time"]) for name, values in parts.items()}
-    found.history += [step.line() for step in steps]
-    for name in ("flux_density", "origin", "probe_flow"):
-        if name in joined:
-            found.probes[name] = joined[name].variable
-    found.trees = _level(joined, "tree")
-    found.stand = _level(joined, "stand_species")
-
-
-def _along_time(values, time):
-    whole = xr.concat(values, "time", coords="minimal", compat="override", join="override")
-    return whole.assign_coords(time=time.values)
-
-
-def _level(joined, dim):
-    """Dataset of what lies along `dim`, its flags as `quality`; None if nothing does."""
-    of_dim = {n: v for n, v in joined.items() if dim in v.dims}
-    if not of_dim:
-        return None
-    renamed = {("quality" if n == f"quality {dim}" else n): v for n, v in of_dim.items()}
-    return xr.Dataset(renamed).transpose(dim, "time")
 
 
 class _Stopwatch:

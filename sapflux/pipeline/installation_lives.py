@@ -13,14 +13,16 @@ class FlagCounts:
     def __init__(self):
         self.records, self.flagged, self.good = {}, {}, {}
 
-    def add(self, cube, installation, bits):
-        """installation : (probe, time) int; bits : (probe, point, time) int32 flags."""
+    def add(self, cube, installation, bits, answered):
+        """installation : (probe, time) int; bits : (probe, point, time) int32 flags;
+        answered : (probe, point, time) bool, records that a channel of the cube covers."""
         for row, name in enumerate(cube["probe"].values):
             for number in np.unique(installation[row][installation[row] >= 0]):
                 key = (str(name), int(number))
-                own = bits[row][:, installation[row] == number]
+                here = (installation[row] == number) & answered[row]
+                own = bits[row][here]
                 self.records[key] = self.records.get(key, 0) + own.size
-                flagged = [int(quality.has(own, flag).sum()) for flag in quality.FLAGS]
+                flagged = [int(quality.has(own, flag).sum()) for flag in quality.NATIVE]
                 self.flagged[key] = self.flagged.get(key, 0) + np.array(flagged)
                 self.good[key] = self.good.get(key, 0) + int((~quality.masked(own)).sum())
 
@@ -35,7 +37,7 @@ def installation_table(site, counts, evidence):
         for number, row in enumerate(episodes(site, probe)):
             key = (probe, number)
             records = counts.records.get(key, 0)
-            flagged = counts.flagged.get(key, np.zeros(len(quality.FLAGS), dtype=int))
+            flagged = counts.flagged.get(key, np.zeros(len(quality.NATIVE), dtype=int))
             share = flagged / records if records else np.full(len(flagged), np.nan)
             rows.append({
                 "probe": probe,
@@ -50,7 +52,7 @@ def installation_table(site, counts, evidence):
                 **_baseline(evidence.get("zero_offset_nights"), key, "zero_offset",
                             "velocity_cm_h"),
                 **{f"{name}_fraction": value
-                   for name, value in zip(quality.FLAGS, share, strict=True)},
+                   for name, value in zip(quality.NATIVE, share, strict=True)},
                 "ended": "removed" if row.removed else ("no record" if not records else ""),
             })  # fmt: skip
     return pd.DataFrame(rows)

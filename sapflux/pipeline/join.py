@@ -31,8 +31,8 @@ def common_grid(cubes, step_s, offset=NO_OFFSET):
 class Joined:
     """Flux density, quality and origin of all probes on the common step, filled block by block.
 
-    Means are weighted with the covered time, which for the equal records of one cube is their
-    count. A step keeps every flag of its records, also where the rest of the step gives a value.
+    Means are weighted with the covered time. A step keeps every flag of its records, also where
+    the rest of the step gives a value.
 
     least_coverage : share of the records of a step that must have a value; with less the step is
         NaN and flagged. Source: hourly completeness of 75 %, common practice.
@@ -45,56 +45,61 @@ class Joined:
         shape = (len(probes), points, len(ends))
         self.probes, self.ends, self.step_s = probes, ends, step_s
         self.least_coverage = least_coverage
-        self.flux = np.full(shape, np.nan)
-        self.quality = np.full(shape, quality.FLAGS["no_record"].mask, dtype=np.int32)
-        self.coverage = np.zeros(shape, dtype=np.float32)
+        self.total = np.zeros(shape)  # flux density times the covered time
+        self.covered = np.zeros(shape, dtype=np.int32)  # s
+        self.answered = np.zeros(shape, dtype=bool)
+        self.quality = np.zeros(shape, dtype=np.int32)
 
-    def add(self, probes, flux, bits, record_ends, interval_s):
+    def add(self, probes, flux, bits, record_ends, interval_s, answered=None):
         """Lay the core of one block of one cube: names of its probes, (probe, point, time).
 
-        A step that two cubes share keeps the value of the first and the flags of both.
+        answered : (probe, point, time) bool, records that a channel of this cube covers; None: all.
+        What a cube says of other records is no flag of the probe.
         """
-        per_step = self.step_s // interval_s
         step = np.timedelta64(self.step_s, "s")
         start = self.ends[0] - step
         number = ((record_ends - np.timedelta64(1, "s") - start) // step).astype(np.int64)
         low, high = number[0], number[-1] + 1
         slot = (record_ends - (start + number * step)) // np.timedelta64(interval_s, "s") - 1
-        shape = (*flux.shape[:2], high - low, per_step)
-        values = np.full(shape, np.nan)
-        flags = np.full(shape, quality.FLAGS["no_record"].mask, dtype=np.int32)
-        values[:, :, number - low, slot] = flux
-        flags[:, :, number - low, slot] = bits
+
+        def laid(values, absent):
+            shape = (*flux.shape[:2], high - low, self.step_s // interval_s)
+            grid_of_steps = np.full(shape, absent, dtype=values.dtype)
+            grid_of_steps[:, :, number - low, slot] = values
+            return grid_of_steps
+
+        if answered is None:
+            answered = np.ones(flux.shape, dtype=bool)
+        values = laid(np.where(answered, flux, np.nan), np.nan)
         there = np.isfinite(values)
-        count = there.sum(axis=-1)
-        share = count / per_step
-        enough = (count > 0) & (share >= self.least_coverage)
-        with np.errstate(invalid="ignore", divide="ignore"):
-            mean = np.where(there, values, 0.0).sum(axis=-1) / count
-        joined = np.bitwise_or.reduce(flags, axis=-1) | quality.bits(
-            partly_missing=(count > 0) & (count < per_step), incomplete_step=~enough
-        )
         rows = [self.probes.index(str(name)) for name in probes]
         here = np.ix_(rows, range(flux.shape[1]), range(low, high))
-        before = self.coverage[here] > 0
-        take = (count > 0) | ~before
-        both = before & (count > 0)
-        self.flux[here] = np.where(take & ~both, np.where(enough, mean, np.nan), self.flux[here])
-        self.quality[here] = np.where(take, joined, 0) | np.where(before, self.quality[here], 0)
-        self.coverage[here] = np.where(take, share, 0) + np.where(before, self.coverage[here], 0)
+        self.total[here] += np.where(there, values, 0.0).sum(axis=-1) * interval_s
+        self.covered[here] += there.sum(axis=-1, dtype=np.int32) * interval_s
+        self.answered[here] |= laid(answered, False).any(axis=-1)
+        flags = laid(np.where(answered, bits, np.int32(0)), 0)
+        self.quality[here] |= np.bitwise_or.reduce(flags, axis=-1)
 
     def dataset(self):
         """The joined cube."""
-        origin = np.where(np.isfinite(self.flux), quality.ORIGINS["measured"], 0).astype(np.int8)
+        enough = (self.covered > 0) & (self.covered >= self.least_coverage * self.step_s)
+        with np.errstate(invalid="ignore", divide="ignore"):
+            mean = np.where(enough, self.total / self.covered, np.nan)
+        bits = self.quality | quality.bits(
+            no_record=~self.answered,
+            partly_missing=(self.covered > 0) & (self.covered < self.step_s),
+            incomplete_step=~enough,
+        )
+        origin = np.where(enough, quality.ORIGINS["measured"], 0).astype(np.int8)
         return xr.Dataset(
             {
-                "flux_density": (schema.RECORD, self.flux),
-                "quality": (schema.RECORD, self.quality),
+                "flux_density": (schema.RECORD, mean),
+                "quality": (schema.RECORD, bits),
                 "origin": (schema.RECORD, origin),
             },
             {
                 "probe": np.array(self.probes, dtype=str),
-                "point": np.arange(1, self.flux.shape[1] + 1),
+                "point": np.arange(1, mean.shape[1] + 1),
                 "time": self.ends.astype("datetime64[ns]"),
             },
             attrs={"interval_s": self.step_s},

@@ -1,6 +1,9 @@
 """What a person should know of a run before using its numbers: fallbacks that were taken."""
 
-from sapflux.site.inventory import bark_known, composition
+from sapflux.ingest.cube import METHODS
+from sapflux.site.inventory import bark_known, composition, sapwood_depth, tree_row
+
+MM_PER_M = 1000.0
 
 GENERAL = (
     "general calibration of heat dissipation for {}: published comparisons find it low by 35 to "
@@ -20,6 +23,15 @@ OUTER = (
     "flux falls with depth"
 )
 
+FEW_TREES = (
+    "{} in {} has {} instrumented tree{}, and a total needs {} (fewest_trees of the recipe's "
+    "stand_transpiration): it will have none"
+)
+SHORT_NEEDLE = (
+    "the sapwood of tree{} {} is deeper than the needles reach, and no profile says how flux "
+    "falls inwards: they will have no flow; give profiles.csv"
+)
+
 
 def notes_of(site, recipe):
     """Notes on this recipe on this site, as sentences."""
@@ -29,6 +41,8 @@ def notes_of(site, recipe):
         *_sapwood(site),
         *_wounds(site),
         *_radial(recipe),
+        *_strata(site, recipe),
+        *_needles(site, recipe),
     ]
 
 
@@ -77,6 +91,49 @@ def _radial(recipe):
     for step in recipe.chains["scaling"]:
         if step.settings.get("method") == "outer_value_inwards":
             yield OUTER
+
+
+def _settings(recipe, stage):
+    """Settings of a stage of the scaling chain, None where the recipe has no such stage."""
+    steps = [step for step in recipe.chains["scaling"] if step.stage.name == stage]
+    return steps[0].settings if steps else None
+
+
+def _strata(site, recipe):
+    """Strata with some instrumented trees, but fewer than a total needs."""
+    settings = _settings(recipe, "stand_transpiration")
+    if settings is None:
+        return
+    trees = _probed_trees(site)
+    for stand, species in composition(site):
+        own = [row for row in trees if (row.stand, row.species) == (stand, species)]
+        if 0 < len(own) < settings["fewest_trees"]:
+            plural = "s" * (len(own) > 1)
+            yield FEW_TREES.format(species, stand, len(own), plural, settings["fewest_trees"])
+
+
+def _needles(site, recipe):
+    """Trees whose probes end short of the sapwood, without a profile to go on with."""
+    settings = _settings(recipe, "probe_flow")
+    if settings is None or settings["method"] == "outer_value_inwards":
+        return
+    profiled = {row.tree or row.species for row in site.table("profiles")}
+    short = set()
+    for probe in site.table("probes"):
+        tree = tree_row(site, probe.tree)
+        if tree is None or not profiled.isdisjoint({tree.tree, tree.species}):
+            continue
+        depth = sapwood_depth(site, probe.tree)
+        reach = max(probe.depth_to_mm, default=0.0) + settings["uncovered_mm"]
+        if depth is not None and depth * MM_PER_M > reach:
+            short.add(probe.tree)
+    if short and settings["method"] == "relative_profile":
+        yield SHORT_NEEDLE.format("s" * (len(short) > 1), _listed(short))
+
+
+def _probed_trees(site):
+    names = {probe.tree for probe in site.table("probes") if probe.method in METHODS}
+    return [row for row in site.table("trees") if row.tree in names]
 
 
 def _listed(names):

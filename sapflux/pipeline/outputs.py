@@ -11,14 +11,6 @@ from sapflux.pipeline.identity import file_sha256, identity, write_json
 from sapflux.pipeline.night_columns import night_tables
 from sapflux.pipeline.tables import write_csv
 
-CONFLICT_NAMES = {
-    "value_1": "value",
-    "file_1": "file",
-    "line_1": "line",
-    "value_2": "other_value",
-    "file_2": "other_file",
-    "line_2": "other_line",
-}
 # Every file a run may write, and what it says of it on screen.
 FILES = {
     "season.csv": "totals over the days that may be totalled",
@@ -83,7 +75,7 @@ def _frames(found):
         **night_tables(found.evidence),
         "ledger": ledger_table(*series),
         "rejected": rejected_table(*series),
-        "conflicts": conflicts_table(*series).rename(columns=CONFLICT_NAMES),
+        "conflicts": conflicts_table(*series),
     }
 
 

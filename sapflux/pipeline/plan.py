@@ -1,42 +1,12 @@
 """Whether a recipe can run on a site: checked whole before any data file is opened."""
 
 from sapflux.errors import Fault, RecipeError
-from sapflux.ingest.cube import OWNER_OF, probe_names
+from sapflux.ingest.cube import METHODS, OWNER_OF, probe_names
 from sapflux.ingest.weather import weather_names
 from sapflux.schema import SIGNALS
+from sapflux.site.sources import SOURCES, given_facts, source_in_words
 
 SUN = {"solar_elevation", "solar_time"}
-
-# Facts that a stage may read, and the table a site gives them by.
-FACT_TABLES = {
-    "installation": "probes.csv",
-    "radial_from": "probes.csv",
-    "radial_to": "probes.csv",
-    "contact_fraction": "probes.csv",
-    "spacing_downstream": "probes.csv",
-    "spacing_upstream": "probes.csv",
-    "window_from": "probes.csv",
-    "window_to": "probes.csv",
-    "pulse_length": "probes.csv",
-    "embedded_diffusivity": "probes.csv",
-    "embedded_spacing": "probes.csv",
-    "given_diffusivity": "wood.csv",
-    "dry_density": "wood.csv",
-    "water_content": "wood.csv",
-    "wound_width": "wounds.csv",
-    "calibration_factor": "calibrations.csv",
-    "calibration_exponent": "calibrations.csv",
-    "calibration_lowest": "calibrations.csv",
-    "calibration_highest": "calibrations.csv",
-    "xylem_radius": "surveys.csv",
-    "sapwood_depth": "cores.csv or an allometry in species.csv",
-    "relative_profile": "profiles.csv",
-    "sapwood_area": "cores.csv or an allometry in species.csv",
-    "sapwood_per_ground": "surveys.csv and plots.csv",
-    "in_leaf": "species.csv",
-    "origin": "",
-}
-METHODS = ("heat_dissipation", "heat_ratio")
 
 
 def methods_of(site):
@@ -63,10 +33,12 @@ def plan_faults(site, recipe):
                 f"List their stages under [[{method}]].",
             )
             continue
-        available = measured_names(site, method) | facts_of(site) | weather_names(site) | SUN
+        available = measured_names(site, method) | given_facts(site) | weather_names(site) | SUN
         yield from _chain_faults(recipe, method, available, "flux_density")
     if methods:
-        given = facts_of(site) | weather_names(site) | SUN | {"flux_density", "quality"}
+        given = (
+            given_facts(site) | weather_names(site) | SUN | {"flux_density", "quality", "origin"}
+        )
         yield from _chain_faults(recipe, "scaling", given, None)
     yield from _ring_porous_faults(site, recipe)
 
@@ -77,27 +49,6 @@ def measured_names(site, method):
     signals = {c.quantity for c in site.table("channels") if c.kind == "probe" and c.id in probes}
     beside = {c.quantity for c in site.table("channels") if c.quantity in OWNER_OF}
     return signals | beside
-
-
-def facts_of(site):
-    """Names of the facts whose tables the site has."""
-    has = {name for name, rows in site.tables.items() if rows}
-    wood = site.table("wood")
-    facts = {
-        name
-        for name, table in FACT_TABLES.items()
-        if not table or all(part.removesuffix(".csv") in has for part in table.split(" and "))
-    }
-    if "cores" in has or any(s.sapwood_area_a_cm2 for s in site.table("species")):
-        facts |= {"sapwood_depth", "sapwood_area"}
-    for fact, column in [
-        ("given_diffusivity", "diffusivity_cm2_s"),
-        ("dry_density", "dry_density_kg_m3"),
-        ("water_content", "water_content"),
-    ]:
-        if not any(getattr(row, column) for row in wood):
-            facts.discard(fact)
-    return facts
 
 
 def _chain_faults(recipe, chain, available, result):
@@ -129,8 +80,8 @@ def _chain_faults(recipe, chain, available, result):
 
 def _remedy(stage, method, name, available):
     remedy = ""
-    if FACT_TABLES.get(name):
-        remedy = f"The site would give it in {FACT_TABLES[name]}."
+    if name in SOURCES:
+        remedy = f"The site would give it in {source_in_words(name)}."
     elif name == "vapour_pressure_deficit":
         remedy = (
             "The site would give it by channels of vapour_pressure_deficit, or of "
@@ -180,5 +131,5 @@ def _ring_porous_faults(site, recipe):
                 f"species {row.species!r} is ring-porous and would go under the "
                 "general calibration, which reads such wood low by a factor of 2 to 5",
                 "Add its own to calibrations.csv, or set general_calibration_accepted "
-                "to true to take relative values knowingly.",
+                "to yes to take relative values knowingly.",
             )

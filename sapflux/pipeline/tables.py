@@ -31,7 +31,7 @@ COLUMNS = {
         "records", "usable_fraction",
         "zero_flow_nights", "zero_flow_nights_accepted", "zero_flow_difference_K",
         "zero_offset_nights", "zero_offset_nights_accepted", "zero_offset_velocity_cm_h",
-        *(f"{name}_fraction" for name in quality.FLAGS),
+        *(f"{name}_fraction" for name in quality.NATIVE),
         "ended",
     ),
     "ledger": (

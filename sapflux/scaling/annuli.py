@@ -3,6 +3,7 @@
 import numpy as np
 
 METHODS = ("relative_profile", "annuli", "outer_value_inwards")
+ROUNDING = 1e-9  # m, of a depth that comes from millimetres in text
 
 
 def point_weights(
@@ -47,8 +48,7 @@ def point_weights(
     begins, ends = begins[order], np.minimum(ends[order], depth)
     borders = np.concatenate([[0.0], (ends[:-1] + begins[1:]) / 2.0, [depth]])
     if not relative and method != "outer_value_inwards":
-        # A depth comes from millimetres in text, and carries their rounding.
-        if depth - ends[-1] > uncovered + 1e-9:
+        if depth - ends[-1] > uncovered + ROUNDING:
             return unknown
         borders[-1] = ends[-1]
     if relative:

@@ -5,6 +5,8 @@ from dataclasses import dataclass, fields
 import numpy as np
 from scipy.stats import ks_2samp
 
+from sapflux.physics.atmosphere import PA_PER_KPA
+
 ROUNDING = 1e-9  # a share that meets its limit on paper may miss it by rounding
 
 
@@ -52,6 +54,7 @@ def percent(share):
     >>> percent(0.79999)
     '79.9 %'
     """
+    # 0.29 * 1000 is a little less than 290.
     return f"{np.floor(share * 1000.0 + 1e-6) / 10.0:g} %"
 
 
@@ -160,8 +163,8 @@ def fair_weather_fault(deficit, valid, rules):
     mean, mean_of_all = chosen.mean(), every.mean()
     if abs(mean - mean_of_all) > rules.largest_deficit_difference * abs(mean_of_all) + ROUNDING:
         return (
-            f"{some}, and the mean deficit of the valid days is {mean / 1000:.3f} kPa, of all days "
-            f"{mean_of_all / 1000:.3f} kPa: more than "
+            f"{some}, and the mean deficit of the valid days is {mean / PA_PER_KPA:.3f} kPa, "
+            f"of all days {mean_of_all / PA_PER_KPA:.3f} kPa: more than "
             f"{percent(rules.largest_deficit_difference)} apart"
         )
     probability = ks_2samp(chosen, every).pvalue

@@ -6,7 +6,7 @@ import numpy as np
 
 from sapflux import quality
 from sapflux.physics import sun
-from sapflux.scaling.completeness import Completeness, day_totals
+from sapflux.scaling.completeness import ROUNDING, Completeness, day_totals
 
 DAY = np.timedelta64(86400, "s")
 
@@ -201,6 +201,7 @@ def _stratum(stand, grid, leaf, calendar, rules):
         nothing |= on_days(zero, grid, False)
     rate = np.where(nothing, 0.0, rate)
     total, reasons = day_totals(rate, grid.sunlight, grid.recorded, calendar.interval_s, rules)
+    reasons = _with_cause(reasons, _few(stand, grid) & ~np.isfinite(rate), live, calendar)
     there = np.isfinite(rate) & ~nothing
     light = grid.sunlight.sum(axis=1)
     expected = light * leaf
@@ -223,6 +224,30 @@ def _stratum(stand, grid, leaf, calendar, rules):
     }
 
 
+def _few(stand, grid):
+    """(day, record) bool: where a stratum has no value because it has too few live trees."""
+    if "quality" not in stand:
+        return np.zeros(grid.sunlight.shape, dtype=bool)
+    return on_days(quality.has(stand["quality"].values, "few_trees"), grid, False)
+
+
+def _with_cause(reasons, few, live, calendar):
+    """The reasons of refused days, with what too few live trees have to do with them."""
+    hours = few.sum(axis=1) * calendar.interval_s / 3600.0
+    most = np.where(few, live, 0.0).max(axis=1)
+    told = list(reasons)
+    for day in np.flatnonzero(hours > 0):
+        if few[day].all():
+            told[day] = (
+                f"too few live trees: at most {most[day]:g} at a time"
+                if most[day]
+                else "no instrumented tree has a value"
+            )
+        elif reasons[day]:
+            told[day] += f" (too few live trees for {hours[day]:g} h)"
+    return told
+
+
 def daily_deficit(deficit, dates, calendar, rules):
     """Daily mean vapour pressure deficit [Pa] on `dates`; NaN where too few records are there."""
     mean = np.full(len(dates), np.nan)
@@ -237,5 +262,5 @@ def daily_deficit(deficit, dates, calendar, rules):
     count = np.bincount(day[use], minlength=len(dates))
     total = np.bincount(day[use], weights=values[use], minlength=len(dates))
     usual_s = np.median(np.diff(ends) / np.timedelta64(1, "s"))  # a gap does not change it
-    enough = count >= rules.least_records * 86400.0 / usual_s - 1e-9
+    enough = count >= rules.least_records * 86400.0 / usual_s - ROUNDING
     return np.divide(total, count, out=mean, where=enough & (count > 0))

@@ -14,7 +14,6 @@ from sapflux.stage import stage
     chain="scaling",
     makes=("probe_flow", "probe_filled_share"),
     flags=("incomplete_radius",),
-    after=("short_gaps",),
     limits={"uncovered_mm": (0.0, 20.0)},
 )
 def probe_flow(
@@ -53,6 +52,7 @@ def probe_flow(
         probe without one must reach the heartwood, and then goes by "annuli". "annuli": each
         value holds for its rings, none beyond the deepest point. "outer_value_inwards": the
         deepest value holds down to the heartwood, which overestimates: +59 % in a worked example.
+        The default assumes least about wood that no point reaches. Own judgement.
     uncovered_mm : float [mm]
         Sapwood beyond the deepest point that "annuli" leaves without flow; more than that and
         the probe is refused. Own judgement: the accuracy of a core.

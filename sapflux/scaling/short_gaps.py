@@ -5,10 +5,13 @@ import numpy as np
 from sapflux import quality
 from sapflux.stage import stage
 
+HOUR_NS = 3600e9
+LONGEST_STEP_S = 3600.0  # of the records of a site; its configuration allows no more
+
 
 def _reach_s(settings):
-    # The neighbours of a gap lie one step further out than the gap; a step is at most an hour.
-    return settings["longest_gap_h"] * 3600.0 + 3600.0
+    # The neighbours of a gap lie one step further out than the gap.
+    return settings["longest_gap_h"] * 3600.0 + LONGEST_STEP_S
 
 
 @stage(
@@ -48,7 +51,7 @@ def short_gaps(flux_density, origin, installation, /, *, longest_gap_h=2.0):
     """
     stamps = flux_density["time"].values.astype("datetime64[ns]").astype(np.int64)
     own = installation.transpose("probe", "time").values[:, np.newaxis, :]
-    values, filled = bridge(flux_density.values, stamps, own, longest_gap_h * 3600e9)
+    values, filled = bridge(flux_density.values, stamps, own, longest_gap_h * HOUR_NS)
     kinds = np.where(filled, np.int8(quality.ORIGINS["interpolated"]), origin.values)
     return {
         "flux_density": flux_density.copy(data=values),

@@ -11,7 +11,6 @@ from sapflux.stage import stage
     chain="scaling",
     makes=("stand_transpiration", "stand_filled_share", "live_trees"),
     flags=("few_trees", "borrowed"),
-    after=("short_gaps", "probe_flow", "tree_flow"),
     limits={"fewest_trees": (1, 1000)},
 )
 def stand_transpiration(
@@ -127,7 +126,6 @@ def _ratio(flows, shares, areas, own):
 @stage(
     chain="scaling",
     makes=("stand_transpiration", "stand_origin"),
-    after=("short_gaps", "probe_flow", "tree_flow", "stand_transpiration"),
 )
 def dormancy(stand_transpiration, stand_filled_share, in_leaf=None, /):
     """Transpiration with the absent values of declared dormancy taken as zero, and their origin.

@@ -12,17 +12,19 @@ rounded.
 import numpy as np
 import pandas as pd
 
-from sapflux.scaling.completeness import (
-    Completeness,
-    day_totals,
-    fair_weather_fault,
-    measured_fault,
-    percent,
-)
+from sapflux.scaling.completeness import Completeness, day_totals
 from sapflux.scaling.days import day_grid, on_days, water_year_begin
+from sapflux.scaling.periods import (
+    month_period,
+    plain_period,
+    share_of,
+    stand_of,
+    sum_of,
+    year_period,
+)
+from sapflux.scaling.whole_stands import ALL
 
 ONE_DAY = np.timedelta64(1, "D")
-PARTS = ("expected", "measured", "filled", "modelled", "light", "assumed")
 COLUMNS = (
     "stand", "species", "start", "end", "transpiration_mm", "lower_mm", "upper_mm",
     "measured_fraction", "filled_fraction", "modelled_fraction", "assumed_zero_fraction",
@@ -40,7 +42,7 @@ def daily(days):
     Source: daylight, gap and record rules, common practice.
     """
     picked = np.flatnonzero(days.touched)
-    return _table(days, [np.array([at]) for at in picked], _plain_period)
+    return _table(days, [np.array([at]) for at in picked], plain_period)
 
 
 def monthly(days):
@@ -55,7 +57,7 @@ def monthly(days):
     """
     months = days.dates.astype("datetime64[M]")
     periods = [np.flatnonzero(months == month) for month in np.unique(months[days.touched])]
-    return _table(days, periods, _month_period)
+    return _table(days, periods, month_period)
 
 
 def water_year(days):
@@ -72,7 +74,7 @@ def water_year(days):
     begins = [water_year_begin(first, days.calendar, later) for later in range(count + 1)]
     year = np.searchsorted(np.array(begins), days.dates, side="right")
     periods = [np.flatnonzero(year == one) for one in np.unique(year[days.touched])]
-    return _table(days, periods, _year_period)
+    return _table(days, periods, year_period)
 
 
 def season(days):
@@ -87,13 +89,13 @@ def season(days):
         valid = days.valid[np.ix_(strata, picked)]
         for n, stratum in enumerate(strata):
             used = picked[valid[n]]
-            part = _sum_of(days, stratum, used, ~np.isin(picked, used))
+            part = sum_of(days, stratum, used, len(picked))
             rows.append(_season_row(days, stand, days.species[stratum], part, picked, len(used)))
         used = picked[valid.all(axis=0)]
-        parts = [_sum_of(days, stratum, used, ~np.isin(picked, used)) for stratum in strata]
-        whole = _stand_of(days, strata, parts)
+        parts = [sum_of(days, stratum, used, len(picked)) for stratum in strata]
+        whole = stand_of(days, strata, parts)
         whole["reason"] = parts[0]["reason"]
-        rows.append(_season_row(days, stand, "all", whole, picked, len(used)))
+        rows.append(_season_row(days, stand, ALL, whole, picked, len(used)))
     return pd.DataFrame(rows, columns=[*COLUMNS, "days", "days_refused"])
 
 
@@ -151,9 +153,9 @@ def _table(days, periods, period_of):
     rows = []
     for stand, strata in _stands(days).items():
         parts = [[period_of(days, stratum, picked) for picked in periods] for stratum in strata]
-        whole = [_stand_of(days, strata, own) for own in zip(*parts, strict=True)]
+        whole = [stand_of(days, strata, own) for own in zip(*parts, strict=True)]
         for name, own in zip(
-            (*(days.species[n] for n in strata), "all"), (*parts, whole), strict=True
+            (*(days.species[n] for n in strata), ALL), (*parts, whole), strict=True
         ):
             rows += [
                 _row(days, stand, name, part, picked)
@@ -164,7 +166,7 @@ def _table(days, periods, period_of):
 
 def _row(days, stand, species, part, picked):
     fractions = {
-        f"{name}_fraction": _over(part[name], part["expected"])
+        f"{name}_fraction": share_of(part[name], part["expected"])
         for name in ("measured", "filled", "modelled")
     }
     return {
@@ -176,7 +178,7 @@ def _row(days, stand, species, part, picked):
         "lower_mm": np.nan,
         "upper_mm": np.nan,
         **fractions,
-        "assumed_zero_fraction": _over(part["assumed"], part["light"]),
+        "assumed_zero_fraction": share_of(part["assumed"], part["light"]),
         "trees": part["trees"],
         "valid": int(np.isfinite(part["total"])),
         "reason": part["reason"],
@@ -186,131 +188,3 @@ def _row(days, stand, species, part, picked):
 def _season_row(days, stand, species, part, picked, count):
     row = _row(days, stand, species, part, picked)
     return row | {"days": count, "days_refused": len(picked) - count}
-
-
-def _over(part, whole):
-    """part / whole, NaN where there is no whole."""
-    return part / whole if whole > 0 else np.nan
-
-
-def _parts(days, stratum, picked):
-    """Sums of the weights of the picked days; what was measured counts on valid days only."""
-    valid = days.valid[stratum, picked]
-    of_stratum = {
-        "expected": days.expected[stratum, picked].sum(),
-        "light": days.light[picked].sum(),
-        "assumed": days.assumed[stratum, picked].sum(),
-    }
-    for name in ("measured", "filled", "modelled"):
-        of_stratum[name] = getattr(days, name)[stratum, picked][valid].sum()
-    trees = days.trees[stratum, picked][valid]
-    return of_stratum | {"trees": int(trees[trees > 0].min()) if (trees > 0).any() else 0}
-
-
-def _plain_period(days, stratum, picked):
-    """A single day as it is. Its shares are those of the day, whether it is valid or not."""
-    at = picked[0]
-    return {
-        "total": float(days.total[stratum, at]),
-        "reason": days.reasons[stratum][at],
-        "light": days.light[at],
-        "trees": int(days.trees[stratum, at]),
-        **{n: getattr(days, n)[stratum, at] for n in PARTS if n != "light"},
-    }
-
-
-def _sum_of(days, stratum, used, refused):
-    part = _parts(days, stratum, used)
-    part["total"] = float(days.total[stratum, used].sum()) if len(used) else np.nan
-    part["reason"] = "" if len(used) else f"none of {len(refused)} days may be totalled"
-    return part
-
-
-def _made_up(days, stratum, picked):
-    """Sum of the valid days over their share of the expected flux; NaN where that is none.
-
-    Dormant days are not scaled.
-    """
-    valid = days.valid[stratum, picked]
-    total, expected = days.total[stratum, picked], days.expected[stratum, picked]
-    if valid.all():
-        return float(total.sum())
-    if (expected[~valid] <= 0).any() or expected[valid].sum() <= 0:
-        return np.nan
-    leaf = expected > 0
-    dormant = total[valid & ~leaf].sum()
-    return float(dormant + total[valid & leaf].sum() * (expected.sum() / expected[valid].sum()))
-
-
-def _month_period(days, stratum, picked):
-    part = _parts(days, stratum, picked)
-    measured = _over(part["measured"], part["expected"])
-    faults = [measured_fault(measured, days.rules.least_month)]
-    return _finish(days, stratum, picked, part, faults, _made_up(days, stratum, picked))
-
-
-def _year_period(days, stratum, picked):
-    part = _parts(days, stratum, picked)
-    rules = days.rules
-    faults = [measured_fault(_over(part["measured"], part["expected"]), rules.least_water_year)]
-    months = days.dates[picked].astype("datetime64[M]")
-    total, poor = 0.0, []
-    for month in np.unique(months):
-        own = picked[months == month]
-        weights = _parts(days, stratum, own)
-        measured = _over(weights["measured"], weights["expected"])
-        if measured_fault(measured, rules.least_month_in_water_year):
-            poor.append(f"{month} {percent(measured)}")
-        total += _made_up(days, stratum, own)
-    if poor:
-        faults.append(
-            f"months with too little measured, {percent(rules.least_month_in_water_year)} are "
-            f"needed: {', '.join(poor)}"
-        )
-    return _finish(days, stratum, picked, part, faults, total)
-
-
-def _finish(days, stratum, picked, part, faults, total):
-    """The part with its total, or with why there is none."""
-    valid = days.valid[stratum, picked]
-    missing = int((~valid).sum())
-    faults = [fault for fault in faults if fault]
-    if not faults and missing:
-        if np.isnan(total):
-            faults = [f"{missing} of {len(picked)} days missing and no expected flux to weigh them"]
-        else:
-            leaf = days.expected[stratum, picked] > 0
-            weather = fair_weather_fault(days.deficit[picked][leaf], valid[leaf], days.rules)
-            faults = [weather] if weather else []
-    if faults:
-        return part | {"total": np.nan, "modelled": 0.0, "reason": "; ".join(faults)}
-    reason = f"{missing} of {len(picked)} days made up for" if missing else ""
-    # The rest of the expected flux was made up for: within days, and for refused days.
-    modelled = max(part["expected"] - part["measured"] - part["filled"], 0.0)
-    return part | {"total": total, "modelled": modelled, "reason": reason}
-
-
-def _stand_of(days, strata, parts):
-    """The stand from its species: sums, and weights by sapwood area per ground."""
-    ground = days.ground[strata]
-    whole = {
-        name: float(sum(share * part[name] for share, part in zip(ground, parts, strict=True)))
-        for name in PARTS
-    }
-    whole["trees"] = sum(part["trees"] for part in parts)
-    # NaN of any species makes the stand NaN.
-    whole["total"] = float(sum(part["total"] for part in parts))
-    refused = np.isnan(whole["total"])
-    if refused:
-        whole["modelled"] = 0.0
-    own = {
-        days.species[n]: part["reason"]
-        for n, part in zip(strata, parts, strict=True)
-        if part["reason"] and (np.isnan(part["total"]) or not refused)
-    }
-    same = set(own.values())
-    if len(own) == len(parts) and len(same) == 1:
-        whole["reason"] = same.pop()
-    else:
-        whole["reason"] = "; ".join(f"{name}: {reason}" for name, reason in own.items())
-    return whole

@@ -9,7 +9,6 @@ from sapflux.stage import stage
 @stage(
     chain="scaling",
     makes=("tree_flow", "tree_filled_share"),
-    after=("short_gaps", "probe_flow"),
 )
 def tree_flow(probe_flow, probe_filled_share, /):
     """Sap flow of a tree: the mean over those of its probes that have a value.

@@ -7,6 +7,7 @@ from sapflux.site import (
     checks_probes,
     checks_records,
     checks_species,
+    checks_surveys,
     checks_trees,
     checks_wood,
 )
@@ -17,6 +18,7 @@ CHECKS = (
     *checks_probes.CHECKS,
     *checks_trees.CHECKS,
     *checks_plots.CHECKS,
+    *checks_surveys.CHECKS,
     *checks_species.CHECKS,
     *checks_wood.CHECKS,
     *checks_records.CHECKS,

@@ -2,7 +2,7 @@
 
 from sapflux.errors import Fault, nearest
 from sapflux.schema import QUANTITIES, SIGNALS
-from sapflux.site.reading import backwards, clashes, overlap
+from sapflux.site.reading import backwards, clashes, day, overlap
 from sapflux.units import accepted
 
 # Where the id of a channel of each kind is listed.
@@ -12,6 +12,10 @@ LISTED = {
     "log": ("logs", "name"),
     "stand": ("stands", "stand"),
 }
+# Signals that give a heat ratio by themselves, and those that do with others, by needle.
+ALONE = {"heat_ratio", "log_heat_ratio", "logged_velocity"}
+RISES = ("rise_downstream", "rise_upstream")
+TEMPERATURES = tuple(s for s in SIGNALS["heat_ratio"] if s.startswith("temperature"))
 METHODS = {signal: method for method, signals in SIGNALS.items() for signal in signals}
 
 
@@ -120,6 +124,62 @@ def _point_faults(where, row, points):
         )
 
 
+def set_faults(reading):
+    """Points of heat-ratio probes whose signals, at some time, do not make a ratio together.
+
+    A point without any of them is not logged then, which is no fault; nor is what a logger still
+    writes of a probe that is out of the wood.
+    """
+    if not reading.are_whole("channels"):
+        return
+    methods, installed, points = {}, {}, {}
+    for row in reading.site.table("probes"):
+        methods[row.probe] = row.method
+        installed.setdefault(row.probe, []).append((row.installed, row.removed))
+    for where, row in reading.rows("channels"):
+        known = row.kind == "probe" and methods.get(row.id) == "heat_ratio"
+        if known and row.quantity in SIGNALS["heat_ratio"]:
+            points.setdefault((row.id, row.point), []).append((where, row))
+    for (probe, point), rows in points.items():
+        for span in _spans([row for _, row in rows]):
+            held = [(where, row) for where, row in rows if overlap(span, _span(row))]
+            signals = {row.quantity for _, row in held}
+            in_wood = any(overlap(span, own) for own in installed[probe])
+            if not (held and in_wood) or _make_a_ratio(signals):
+                continue
+            given = [s for s in SIGNALS["heat_ratio"] if s in signals]
+            time = "" if span == (None, None) else f" from {day(span[0])} to {day(span[1])}"
+            yield Fault(
+                held[0][0],
+                f"point {point} of probe {probe!r} has {', '.join(given)}{time} and no "
+                f"{', '.join(_missing(signals))}",
+                "A point needs both rises, all four temperatures, heat_ratio, log_heat_ratio or "
+                "logged_velocity, for the same time.",
+            )
+            break  # the others have the same reason
+
+
+def _spans(rows):
+    """Spans of time between which no row begins or ends, earliest first; None is open."""
+    edges = sorted({moment for row in rows for moment in _span(row) if moment is not None})
+    return list(zip([None, *edges], [*edges, None], strict=True))
+
+
+def _make_a_ratio(signals):
+    """Whether signals make a ratio: one alone, or rise or two temperatures of either needle."""
+    return bool(signals & ALONE) or all(
+        f"rise_{needle}" in signals
+        or {f"temperature_before_{needle}", f"temperature_after_{needle}"} <= signals
+        for needle in ("downstream", "upstream")
+    )
+
+
+def _missing(signals):
+    """What signals that make no ratio lack of the set that they have most of."""
+    nearest_set = max(RISES, TEMPERATURES, key=lambda whole: len(signals.intersection(whole)))
+    return [signal for signal in nearest_set if signal not in signals]
+
+
 def overlap_faults(reading):
     """Columns that are two things at once, and things that come from two columns at once."""
     rows = list(reading.rows("channels"))
@@ -147,4 +207,4 @@ def _target(row):
     return (row.kind, row.id, row.point, row.quantity)
 
 
-CHECKS = (row_faults, probe_faults, overlap_faults)
+CHECKS = (row_faults, probe_faults, set_faults, overlap_faults)

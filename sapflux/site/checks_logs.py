@@ -1,12 +1,13 @@
 """Logs and layouts of `site.toml`: what must fit together."""
 
-from datetime import datetime
+from datetime import datetime, timedelta, timezone
 
 from sapflux.errors import Fault
 from sapflux.schema import SIGNALS
+from sapflux.site.config import YEAR_DAY_HHMM
 
-YEAR_DAY_HHMM = "year_day_hhmm"
 SOME_TIME = datetime(2026, 11, 23, 14, 35)  # no two parts alike, and no part of the day is zero
+OWN_OFFSET = timezone(timedelta(hours=1))  # what %z is tried with
 
 
 def log_faults(reading):
@@ -56,16 +57,17 @@ def _time_faults(where, layout):
                 "Name year, day of year and hhmm.",
             )
         return
+    some = SOME_TIME.replace(tzinfo=OWN_OFFSET) if "%z" in layout.time_format else SOME_TIME
     try:
-        back = datetime.strptime(SOME_TIME.strftime(layout.time_format), layout.time_format)
+        back = datetime.strptime(some.strftime(layout.time_format), layout.time_format)
     except ValueError:
         back = None
-    if back != SOME_TIME:
+    if back != some:
         yield Fault(
             where,
             f"time_format {layout.time_format!r} does not say date, hour and minute",
-            "Use strptime codes such as '%Y-%m-%d %H:%M:%S', without a zone, or "
-            f"'{YEAR_DAY_HHMM}'.",
+            "Use strptime codes such as '%Y-%m-%d %H:%M:%S', with %z where a stamp carries its "
+            f"own offset from UTC, or '{YEAR_DAY_HHMM}'.",
         )
 
 

@@ -1,14 +1,17 @@
-"""`stands.csv`, `plots.csv` and `surveys.csv`: what must fit together."""
+"""`stands.csv` and `plots.csv`: what must fit together."""
 
 from sapflux.errors import Fault
 from sapflux.site.inventory import plan_area
-from sapflux.site.reading import repeats
+from sapflux.site.reading import parted, repeats
 
 
 def stand_faults(reading):
-    """Stands that stand twice."""
-    for where, row, former in repeats(reading.rows("stands"), lambda r: r.stand):
+    """Stands that stand twice, or whose name outputs cannot write."""
+    rows = list(reading.rows("stands"))
+    for where, row, former in repeats(rows, lambda r: r.stand):
         yield Fault(where, f"stand {row.stand!r} stands in {former} already", "Keep one of them.")
+    for where, row in rows:
+        yield from parted(where, "stand", row.stand)
 
 
 def plot_faults(reading):
@@ -83,22 +86,4 @@ def _circle(plot, plots):
     return [*way, at] if at == plot else []
 
 
-def survey_faults(reading):
-    """Stems that stand twice on one date, or name what is not there."""
-    rows = list(reading.rows("surveys"))
-    for where, row, former in repeats(rows, lambda r: (r.plot, r.stem, r.date)):
-        yield Fault(
-            where,
-            f"stem {row.stem!r} of plot {row.plot!r} stands in {former} with the "
-            f"same date {row.date}",
-            "Keep one of them, or name the stems apart.",
-        )
-    told = set()
-    for where, row in rows:
-        for what, table, name in (("plot", "plots", row.plot), ("species", "species", row.species)):
-            if (what, name) not in told:  # once, not for every stem
-                told.add((what, name))
-                yield from reading.unknown(where, what, table, what, name)
-
-
-CHECKS = (stand_faults, plot_faults, nesting_faults, survey_faults)
+CHECKS = (stand_faults, plot_faults, nesting_faults)

@@ -11,7 +11,8 @@ from sapflux.site.inventory import (
     tree_row,
     xylem_radius,
 )
-from sapflux.site.reading import backwards, clashes
+from sapflux.site.reading import backwards, clashes, parted
+from sapflux.units import MM_PER_M
 
 SAP_FLOW = ("heat_dissipation", "heat_ratio")
 
@@ -83,7 +84,7 @@ def _window_faults(where, row):
 
 
 def name_faults(reading):
-    """Probe names that stand for two things."""
+    """Probe names that stand for two things, or that outputs cannot write."""
     rows = list(reading.rows("probes"))
     for where, row, former, _ in clashes(
         rows, lambda r: r.probe, lambda r: (r.installed, r.removed)
@@ -95,6 +96,8 @@ def name_faults(reading):
         )
     first = {}
     for where, row in rows:
+        if row.probe not in first:
+            yield from parted(where, "probe", row.probe)
         where_first, known = first.setdefault(row.probe, (where, row))
         former = where_first.rpartition(", ")[2]
         for column in ("tree", "method"):
@@ -128,11 +131,11 @@ def tree_faults(reading):
                 )
             told.add(row.tree)
             continue
-        if row.depth_to_mm and max(row.depth_to_mm) > radius * 1000.0:
+        if row.depth_to_mm and max(row.depth_to_mm) > radius * MM_PER_M:
             yield Fault(
                 where,
                 f"depth_to_mm is {max(row.depth_to_mm):g} and the xylem radius of "
-                f"tree {row.tree!r} is {radius * 1000.0:.0f} mm",
+                f"tree {row.tree!r} is {radius * MM_PER_M:.0f} mm",
                 "Depths are in mm below cambium, diameters in cm.",
             )
         if (

@@ -3,17 +3,26 @@
 from sapflux.errors import Fault
 from sapflux.site.checks_probes import SAP_FLOW
 from sapflux.site.inventory import core_rows, latest_survey, living_stems, tree_row
-from sapflux.site.reading import repeats
+from sapflux.site.reading import parted, repeats
+
+WHOLE_STAND = "all"  # how tables name the sum of a stand's species
 
 
 def row_faults(reading):
-    """Species that stand twice, or of which half is told."""
+    """Species that stand twice, whose name means something else, or of which half is told."""
     rows = list(reading.rows("species"))
     for where, row, former in repeats(rows, lambda r: r.species):
         yield Fault(
             where, f"species {row.species!r} stands in {former} already", "Keep one of them."
         )
     for where, row in rows:
+        yield from parted(where, "species", row.species)
+        if row.species == WHOLE_STAND:
+            yield Fault(
+                where,
+                f"a species is called {WHOLE_STAND!r}",
+                "Give it another name: in results this one is the whole stand.",
+            )
         yield from _half_faults(
             where,
             row,

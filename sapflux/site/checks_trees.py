@@ -2,11 +2,12 @@
 
 from sapflux.errors import Fault
 from sapflux.site.inventory import bark_thickness, latest_survey, xylem_radius
-from sapflux.site.reading import repeats
+from sapflux.site.reading import parted, repeats
+from sapflux.units import CM_PER_M, MM_PER_M
 
 
 def row_faults(reading):
-    """Trees that stand twice, or name what is not there."""
+    """Trees that stand twice, name what is not there, or have a name that outputs cannot write."""
     rows = list(reading.rows("trees"))
     for where, row, former in repeats(rows, lambda r: r.tree):
         yield Fault(
@@ -15,6 +16,7 @@ def row_faults(reading):
             "Give each tree a name of its own.",
         )
     for where, row in rows:
+        yield from parted(where, "tree", row.tree)
         yield from reading.unknown(where, "stand", "stands", "stand", row.stand)
         yield from reading.unknown(where, "species", "species", "species", row.species)
 
@@ -35,7 +37,7 @@ def survey_faults(reading):
                 "Mend the one that is wrong.",
             )
         if xylem_radius(reading.site, row.tree) is None:
-            bark = bark_thickness(reading.site, row.tree) * 1000.0
+            bark = bark_thickness(reading.site, row.tree) * MM_PER_M
             yield Fault(
                 where,
                 f"bark of {bark:g} mm leaves no wood in tree {row.tree!r} of "
@@ -60,11 +62,11 @@ def core_faults(reading):
         if not reading.are_whole("trees", "surveys", "plots", "cores"):
             continue
         radius = xylem_radius(reading.site, row.tree)
-        if radius is not None and row.sapwood_depth_cm > radius * 100.0:
+        if radius is not None and row.sapwood_depth_cm > radius * CM_PER_M:
             yield Fault(
                 where,
                 f"sapwood_depth_cm is {row.sapwood_depth_cm:g} and the xylem radius "
-                f"of tree {row.tree!r} is {radius * 100.0:.1f} cm",
+                f"of tree {row.tree!r} is {radius * CM_PER_M:.1f} cm",
                 "Sapwood is at most as deep as the radius under bark; depths are in cm.",
             )
 

@@ -1,5 +1,6 @@
 """`wood.csv`, `wounds.csv`, `profiles.csv` and `calibrations.csv`: what must fit together."""
 
+from sapflux.constants import WATER_DENSITY
 from sapflux.errors import Fault
 from sapflux.physics.wood import void_fraction
 from sapflux.site.reading import backwards, clashes, repeats
@@ -93,7 +94,7 @@ def _water_faults(where, row):
     void = void_fraction(density, water)
     pores = void_fraction(density, FIBRE_SATURATION)
     if void < -VOLUME_ERROR:
-        most = water + void * 1000.0 / density
+        most = water + void * WATER_DENSITY / density
         yield Fault(
             where,
             f"water_content is {water:g}, and wood of {density:g} kg m-3 has room for {most:.2f}",
@@ -147,6 +148,16 @@ def profile_faults(reading):
             yield Fault(where, f"{of} has one node", "Give at least two relative depths.")
         if whole and not any(row.ratio > 0 for _, row in rows):
             yield Fault(where, f"{of} is 0 at every depth", "Give a ratio above 0 somewhere.")
+        where_first, first = rows[0]
+        where, other = next(((w, r) for w, r in rows if r.source != first.source), (None, None))
+        if other is not None:
+            yield Fault(
+                where,
+                f"{of} has nodes of source {other.source!r} here and of {first.source!r} in "
+                f"{where_first.rpartition(', ')[2]}",
+                "Two profiles do not mix: give each its own time, or keep one of them.",
+            )
+            continue
         for where, row, former in repeats(rows, lambda r: r.relative_depth):
             yield Fault(
                 where,
@@ -172,6 +183,13 @@ def calibration_faults(reading):
             where,
             f"calibration {row.calibration!r} stands in {former} already",
             "Give each a name of its own.",
+        )
+    for where, row, former in repeats(rows, lambda r: (r.species, r.method, r.date)):
+        yield Fault(
+            where,
+            f"species {row.species!r} has a calibration for {row.method} of {row.date} in {former} "
+            "already",
+            "The latest counts: keep one of them, or give the dates on which they were made.",
         )
     for where, row in rows:
         yield from reading.unknown(where, "species", "species", "species", row.species)

@@ -10,6 +10,11 @@ from pydantic import BaseModel, ConfigDict, Field, field_validator, model_valida
 
 from sapflux.site.cells import month_day
 
+YEAR_DAY_HHMM = "year_day_hhmm"  # the one time format that is no strptime format
+# Years a logger can have written, both ends within: a stamp outside comes from a clock that lost
+# its date, or from torn text. Source: own judgement.
+YEARS = (1990, 2100)
+
 
 class Strict(BaseModel):
     """Unknown keys and wrong types are faults; objects do not change once made."""
@@ -79,8 +84,9 @@ class Layout(Strict):
     time_columns: Annotated[tuple[str, ...], Field(min_length=1, max_length=3, strict=False)] = (
         "TIMESTAMP",
     )
-    # strptime format of the time columns joined by one blank; or "year_day_hhmm" for
-    # year, day of year and hhmm with 2400 (three columns)
+    # strptime format of the time columns joined by one blank (with %z a stamp's own offset goes
+    # before the log's clock); or YEAR_DAY_HHMM for year, day of year and hhmm with 2400
+    # (three columns)
     time_format: str = "%Y-%m-%d %H:%M:%S"
     missing_text: Annotated[tuple[str, ...], Field(strict=False)] = ("", "NAN", "NaN", "nan", "NA")
     missing_numbers: Annotated[tuple[float, ...], Field(strict=False)] = ()

@@ -10,31 +10,8 @@ import numpy as np
 from sapflux.errors import Fault, SiteError
 from sapflux.site import dated, inventory, laying
 from sapflux.site.installations import episodes, installation_numbers, latest_begun
-
-MM = 1e-3  # in m
-CM2_PER_S = 1e-4  # in m2 s-1
-G = 1e-3  # in kg
-# fact -> column of its table, and the column's unit in SI
-INSTALLED = {
-    "spacing_downstream": ("spacing_downstream_mm", MM),
-    "spacing_upstream": ("spacing_upstream_mm", MM),
-    "window_from": ("window_from_s", 1.0),
-    "window_to": ("window_to_s", 1.0),
-    "pulse_length": ("pulse_length_s", 1.0),
-    "embedded_diffusivity": ("embedded_diffusivity_cm2_s", CM2_PER_S),
-    "embedded_spacing": ("embedded_spacing_mm", MM),
-}
-SAMPLED = {
-    "given_diffusivity": ("diffusivity_cm2_s", CM2_PER_S),
-    "dry_density": ("dry_density_kg_m3", 1.0),
-    "water_content": ("water_content", 1.0),
-}
-CALIBRATED = {
-    "calibration_factor": ("factor_g_m2_s", G),
-    "calibration_exponent": ("exponent", 1.0),
-    "calibration_lowest": ("lowest_index", 1.0),
-    "calibration_highest": ("highest_index", 1.0),
-}
+from sapflux.site.sources import CALIBRATED, INSTALLED, SAMPLED
+from sapflux.units import MM, factor_of_key
 
 
 def lay_facts(site, probes, point_count, times_end, interval_s, wanted=None):
@@ -112,7 +89,7 @@ def stand_facts(site, times_end):
     areas = inventory.sapwood_per_ground(site)
     known = {row.species: row for row in site.table("species")}
     rows = [known.get(species) for _, species in areas]
-    days = month_days(site.standard(ends - np.timedelta64(1, "ns")))
+    days = month_days(site.day_of(ends))
     leaf = np.ones((len(rows), len(ends)), dtype=np.int8)
     for place, row in enumerate(rows):
         if row is not None and row.leaf_on and row.leaf_off:
@@ -166,7 +143,8 @@ def _makers(site, records, point_count):
     }
     depth = dict(zip(records.probes, (depths[tree] for tree in records.trees), strict=True))
 
-    def of_row(column, unit):
+    def of_row(column):
+        unit = factor_of_key(column)
         return lambda: laying.by_installation(
             records, lambda row: laying.as_number(getattr(row, column)) * unit, ("probe",)
         )
@@ -176,26 +154,26 @@ def _makers(site, records, point_count):
             records, lambda row: laying.padded(values_of(row), point_count), ("probe", "point")
         )
 
-    def of_wood(column, unit):
+    def of_wood(column):
         return lambda: laying.by_date(
             records,
             lambda place, number: dated.wood_nodes(
                 site, records.trees[place], records.species[place], column
             ),
-            unit,
+            factor_of_key(column),
         )
 
-    def of_calibration(column, unit):
-        return lambda: (("probe",), _calibrated(site, records, column, unit))
+    def of_calibration(column):
+        return lambda: (("probe",), _calibrated(site, records, column))
 
     return {
-        **{name: of_row(*column) for name, column in INSTALLED.items()},
+        **{name: of_row(column) for name, column in INSTALLED.items()},
         "radial_from": of_points(lambda row: np.array(row.depth_from_mm) * MM),
         "radial_to": of_points(lambda row: np.array(row.depth_to_mm) * MM),
         "contact_fraction": of_points(lambda row: _contact(row, depth[row.probe])),
-        **{name: of_wood(*column) for name, column in SAMPLED.items()},
+        **{name: of_wood(column) for name, column in SAMPLED.items()},
         "wound_width": lambda: laying.by_date(records, _wounds(site, records), MM),
-        **{name: of_calibration(*column) for name, column in CALIBRATED.items()},
+        **{name: of_calibration(column) for name, column in CALIBRATED.items()},
         "xylem_radius": lambda: (("probe",), _radii(site, records)),
         "sapwood_depth": lambda: (("probe",), np.array([depth[p] for p in records.probes])),
         "relative_profile": lambda: _profiles(site, records),
@@ -222,9 +200,9 @@ def _contact(row, sapwood_depth):
     return np.divide(inside, span, out=at_a_depth, where=span > 0)
 
 
-def _calibrated(site, records, column, unit):
+def _calibrated(site, records, column):
     """Of each probe's species the register's latest row for heat dissipation."""
-    latest = {}
+    latest, unit = {}, factor_of_key(column)
     for row in site.table("calibrations"):
         if row.method == "heat_dissipation":
             known = latest.get(row.species)

@@ -44,8 +44,8 @@ NAMES = [
     (r"ln_?ratio|log_?ratio", "probe", "log_heat_ratio", ("1", "")),
     (r"ratio", "probe", "heat_ratio", ("1", "")),
     (r"^vh|_vh|velocity", "probe", "logged_velocity", ("cm h-1", "mm h-1", "cm s-1", "m s-1")),
-    (r"dt|diff|sap|tdp|probe|^tc", "probe", "heated_emf", ("mV", "uV")),
-    (r"dt|diff|sap|tdp|probe", "probe", "heated_difference", ("K", "degC", "degF")),
+    (r"dt|diff|sap|probe|^tc", "probe", "heated_emf", ("mV", "uV")),
+    (r"dt|diff|sap|probe", "probe", "heated_difference", ("K", "degC", "degF")),
 ]  # fmt: skip
 
 

@@ -8,8 +8,10 @@ from dataclasses import dataclass
 from datetime import timedelta
 
 from sapflux.errors import Fault, SiteError
+from sapflux.units import CM2, CM_PER_M, M2_PER_HA, MM_PER_M
 
-# Rows of one plot that are no further apart than this are one survey, which may take days.
+# Rows of one plot that are no further apart than this are one survey: measuring a plot may take
+# days and be interrupted by weather, and two surveys lie a season apart. Source: own judgement.
 SURVEY_LASTS = timedelta(days=30)
 
 
@@ -31,12 +33,12 @@ class Composition:
     @property
     def stems_per_ha(self):
         """Living stems per hectare of plan area."""
-        return self.stems_per_ground * 1e4
+        return self.stems_per_ground * M2_PER_HA
 
     @property
     def basal_area_m2_ha(self):
         """Basal area over bark in m2 per hectare of plan area."""
-        return self.basal_area_per_ground * 1e4
+        return self.basal_area_per_ground * M2_PER_HA
 
 
 def annulus_area(outer_radius, depth):
@@ -102,9 +104,9 @@ def bark_thickness(site, tree):
     """Thickness of one side's bark [m]: of `trees.csv`, else the mean of the cores; else None."""
     known = tree_row(site, tree)
     if known is not None and known.bark_mm is not None:
-        return known.bark_mm / 1000.0
+        return known.bark_mm / MM_PER_M
     given = [row.bark_mm for row in core_rows(site, tree) if row.bark_mm is not None]
-    return math.fsum(given) / len(given) / 1000.0 if given else None
+    return math.fsum(given) / len(given) / MM_PER_M if given else None
 
 
 def bark_known(site, tree):
@@ -163,8 +165,8 @@ def stem_sapwood_area(row, cores, bark, species):
         return annulus_area(radius, depth) if radius is not None and depth <= radius else None
     if species is None or species.sapwood_area_a_cm2 is None or species.sapwood_area_b is None:
         return None
-    diameter_cm = _diameter_over_bark(row, bark) * 100.0
-    return species.sapwood_area_a_cm2 * diameter_cm**species.sapwood_area_b * 1e-4
+    diameter_cm = _diameter_over_bark(row, bark) * CM_PER_M
+    return species.sapwood_area_a_cm2 * diameter_cm**species.sapwood_area_b * CM2
 
 
 def sapwood_per_ground(site):
@@ -187,7 +189,7 @@ def composition(site):
     for plot, row in living_stems(site):
         stem = _stem(site, plot.stand, row)
         diameter = _diameter_over_bark(row, stem["bark"])
-        if diameter < plot.smallest_diameter_cm / 100.0:
+        if diameter < plot.smallest_diameter_cm / CM_PER_M:
             continue
         ground = _sampled_area(site, areas, plot.stand, diameter)
         basal = math.pi * diameter**2 / 4.0
@@ -206,19 +208,42 @@ def composition(site):
 def living_stems(site):
     """(row of `plots.csv`, row of `surveys.csv`) of every living stem in each plot's last survey.
 
-    A survey of a plot is what was measured within 30 days; of a stem measured twice in it the
-    later row counts.
+    A survey of a plot is what was measured within SURVEY_LASTS; of a stem measured twice in it
+    the later row counts.
     """
     for plot in site.table("plots"):
-        rows = [row for row in site.table("surveys") if row.plot == plot.plot]
-        if not rows:
-            continue
-        last = max(row.date for row in rows)
-        stems = {}
-        for row in sorted(rows, key=lambda row: row.date):
-            if last - row.date <= SURVEY_LASTS:
-                stems[row.stem] = row
-        yield from ((plot, row) for row in stems.values() if row.status == "alive")
+        for stems in plot_surveys(site, plot.plot)[:1]:
+            yield from ((plot, row) for row in stems.values() if row.status == "alive")
+
+
+def plot_surveys(site, plot):
+    """The surveys of a plot, latest first: each a stem's name -> its (later) row."""
+    rows = [row for row in site.table("surveys") if row.plot == plot]
+    rows.sort(key=lambda row: row.date)
+    found = []
+    while rows:
+        last = rows[-1].date
+        found.append({row.stem: row for row in rows if last - row.date <= SURVEY_LASTS})
+        rows = [row for row in rows if last - row.date > SURVEY_LASTS]
+    return found
+
+
+def surveyed_diameter(site, plot, row):
+    """Diameter over bark [m] of a stem surveyed in a plot; under bark where no bark is known."""
+    return _diameter_over_bark(row, _stem(site, plot.stand, row)["bark"])
+
+
+def plots_within(site):
+    """Plot -> the next larger plot that it lies in, "" for none."""
+    return {row.plot: row.within for row in site.table("plots")}
+
+
+def outer_plots(within, plot):
+    """Names of the plots that a plot lies in, from the next one outwards; see `plots_within`."""
+    found, name = [], plot
+    while (name := within.get(name, "")) and name != plot and name not in found:
+        found.append(name)
+    return found
 
 
 def plan_area(plot):
@@ -252,21 +277,12 @@ def _sampled_area(site, areas, stand, diameter):
     counted = [
         plot
         for plot in site.table("plots")
-        if plot.stand == stand and plot.smallest_diameter_cm / 100.0 <= diameter
+        if plot.stand == stand and plot.smallest_diameter_cm / CM_PER_M <= diameter
     ]
-    outer = {plot.plot: plot.within for plot in site.table("plots")}
-    names = {plot.plot for plot in counted}
-    return math.fsum(areas[name] for name in sorted(names) if not _lies_in(name, names, outer))
-
-
-def _lies_in(name, names, outer):
-    """Whether a plot lies in one of the named plots, at any remove."""
-    seen = {name}
-    while (name := outer.get(name, "")) and name not in seen:
-        if name in names:
-            return True
-        seen.add(name)
-    return False
+    within, names = plots_within(site), {plot.plot for plot in counted}
+    return math.fsum(
+        areas[name] for name in sorted(names) if names.isdisjoint(outer_plots(within, name))
+    )
 
 
 def _stem(site, stand, row):
@@ -288,14 +304,14 @@ def _summed(parts):
 
 
 def _mean_depth(cores):
-    return math.fsum(row.sapwood_depth_cm for row in cores) / len(cores) / 100.0
+    return math.fsum(row.sapwood_depth_cm for row in cores) / len(cores) / CM_PER_M
 
 
 def _radius_inside_bark(row, bark):
-    radius = row.diameter_cm / 200.0 - (0.0 if row.under_bark else bark or 0.0)
+    radius = row.diameter_cm / 2.0 / CM_PER_M - (0.0 if row.under_bark else bark or 0.0)
     return radius if radius > 0 else None
 
 
 def _diameter_over_bark(row, bark):
     """Diameter [m]; the one under bark where no bark is known."""
-    return row.diameter_cm / 100.0 + (2.0 * (bark or 0.0) if row.under_bark else 0.0)
+    return row.diameter_cm / CM_PER_M + (2.0 * (bark or 0.0) if row.under_bark else 0.0)

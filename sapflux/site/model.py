@@ -43,3 +43,10 @@ class Site:
     def standard(self, utc):
         """UTC datetime64 as fixed standard time."""
         return utc + self.offset
+
+    def day_of(self, utc_ends):
+        """Day of fixed standard time that records belong to, datetime64[D], by their ends in UTC.
+
+        A record that ends at 0 h belongs to the day before.
+        """
+        return (self.standard(utc_ends) - np.timedelta64(1, "s")).astype("datetime64[D]")

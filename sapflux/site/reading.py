@@ -53,6 +53,16 @@ class Reading:
         yield Fault(where, f"{what} {name!r} is not in {source}", hint)
 
 
+def parted(where, what, name):
+    """Faults (none or one) of a name with the mark that parts stand and species in outputs."""
+    if "/" in name:
+        yield Fault(
+            where,
+            f"{what} {name!r} has a '/'",
+            "Name it without one: outputs write 'stand/species' and name files by it.",
+        )
+
+
 def day(moment):
     """A time as messages write it: without a clock time where it is midnight.
 

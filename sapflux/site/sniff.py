@@ -9,7 +9,7 @@ from itertools import pairwise
 from sapflux.errors import Fault, SiteError
 from sapflux.site.config import Layout
 from sapflux.site.guesses import written_unit
-from sapflux.site.stamps import find_times, written_moment
+from sapflux.site.time_guesses import find_times, written_moment
 
 READ_BYTES = 300_000
 DELIMITERS = {",": ",", ";": ";", "tab": "\t", "|": "|", "space": " "}

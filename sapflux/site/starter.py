@@ -26,6 +26,7 @@ aggregation_line = 4        # the line that says Avg, Smp, Tot; 0 where the file
 header_lines = 4            # all lines above the first record; 0: up to the last of the above
 time_columns = ["TIMESTAMP"]          # one, or two or three that make the time together
 time_format = "%Y-%m-%d %H:%M:%S"     # strptime codes, columns joined by a blank;
+                                      # with %z a stamp's own offset goes before the clock;
                                       # or "year_day_hhmm" (three columns, hhmm up to 2400)
 missing_text = ["", "NAN", "NaN", "nan", "NA"]  # cells that mean: no value
 missing_numbers = []                            # numbers that mean it, like -9999
@@ -75,7 +76,7 @@ EXAMPLES = {
     ),
     "plots": (
         ("Survey plots. Give plan_area_m2 (horizontal), or slope_area_m2 with slope_deg. A plot",
-         "that lies in a larger one names it in `within`."),
+         "that lies in a larger one names it in `within`; one without a stem has yes in `empty`."),
         ({"plot": "slope-1", "stand": "slope", "plan_area_m2": "400",
           "smallest_diameter_cm": "7"},),
     ),

@@ -111,6 +111,7 @@ class Plot(Row):
     slope_deg: Annotated[float, Field(ge=0, lt=70)] | None = None
     smallest_diameter_cm: NotNegative = 0.0
     within: str = ""  # the larger plot that this one lies in (nested plots)
+    empty: bool = False  # surveyed, and no stem stands on it
 
 
 class Survey(Row):

@@ -9,9 +9,8 @@ from correction_records import beside, fact, record, stamps
 
 import sapflux.correction  # noqa: F401
 from sapflux import quality, schema
-from sapflux.correction.order import ORDER
 from sapflux.pipeline.execute import Chain, fitted_tables, run_blocks
-from sapflux.stage import REGISTRY
+from sapflux.stage import ORDER, REGISTRY
 
 TIME = stamps("2031-03-01", 24)
 SHAPE = (4, 2, len(TIME))

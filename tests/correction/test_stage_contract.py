@@ -1,7 +1,6 @@
 """What holds for every correction, whatever it corrects."""
 
 import inspect
-from itertools import pairwise
 from typing import Literal, get_args, get_origin
 
 import numpy as np
@@ -11,10 +10,10 @@ from correction_records import beside, fact, record, stamps, table_of
 
 import sapflux.correction
 from sapflux import quality, schema
-from sapflux.correction.order import ORDER
-from sapflux.stage import REGISTRY, bind
+from sapflux.stage import ORDER, REGISTRY, Stage, bind, stage
 
-STAGES = {key: stage for key, stage in REGISTRY.items() if key[0] in ORDER}
+METHODS = ("heat_dissipation", "heat_ratio")
+STAGES = {key: stage for key, stage in REGISTRY.items() if key[0] in METHODS}
 CALLS = [
     (key, method)
     for key, stage in STAGES.items()
@@ -115,8 +114,7 @@ def test_a_value_is_lost_only_where_a_masking_flag_says_so(key, method, holes):
         unexplained = value.isnull() & ~(absent_before | masked)
         assert not unexplained.any(), f"{name} is NaN without a flag"
         left = value.notnull() & masked
-        if stage.makes:
-            assert not left.any(), f"{name} has a value under a masking flag"
+        assert not left.any(), f"{name} has a value under a masking flag"
 
 
 @pytest.mark.parametrize(("key", "method"), CALLS, ids=str)
@@ -164,12 +162,54 @@ def test_settings_are_documented_with_their_unit(key):
         assert line.endswith(": text") or line.endswith("]"), line
 
 
-@pytest.mark.parametrize("chain", ORDER)
-def test_the_order_of_work_is_that_of_the_trade(chain):
+@pytest.mark.parametrize("chain", METHODS)
+def test_every_stage_of_the_order_of_work_is_there(chain):
     assert {name for one, name in STAGES if one == chain} == set(ORDER[chain])
-    for earlier, later in pairwise(ORDER[chain]):
-        assert earlier in STAGES[chain, later].after
-        assert later not in STAGES[chain, earlier].after
+
+
+@pytest.mark.parametrize(
+    ("chain", "earlier", "later"),
+    # Faults, then the zero, then geometry, then the calibration: common practice.
+    [
+        ("heat_dissipation", "screen_power_loss", "zero_flow_difference"),
+        ("heat_dissipation", "zero_flow_difference", "sapwood_contact"),
+        ("heat_dissipation", "sapwood_contact", "flow_index"),
+        ("heat_dissipation", "flow_index", "flux_density"),
+        ("heat_ratio", "rises", "thermal_diffusivity"),
+        ("heat_ratio", "thermal_diffusivity", "zero_offset"),
+        ("heat_ratio", "zero_offset", "wound"),
+        ("heat_ratio", "wound", "flux_density"),
+    ],
+)
+def test_the_order_of_work_is_that_of_the_trade(chain, earlier, later):
+    assert earlier in STAGES[chain, later].after
+    assert later not in STAGES[chain, earlier].after
+
+
+@pytest.mark.parametrize("key", STAGES, ids=str)
+def test_what_a_stage_needs_is_made_before_it(key):
+    made_in_chain = {name for one in ORDER[key[0]] for name in STAGES[key[0], one].makes}
+    made_before = {name for one in STAGES[key].after for name in STAGES[key[0], one].makes}
+    assert set(STAGES[key].needs) & made_in_chain <= made_before
+
+
+def test_a_stage_without_a_place_in_the_order_of_work_is_refused():
+    def polish(flow_index, /):
+        return flow_index
+
+    with pytest.raises(ValueError, match=r"^stage 'polish' has no place in the order of work of "):
+        stage(chain="heat_dissipation")(polish)
+    assert ("heat_dissipation", "polish") not in REGISTRY
+    # A stage that is made without registering it stands anywhere.
+    assert Stage("polish", polish, "heat_dissipation", (), ()).after == ()
+
+
+def test_a_name_stands_once_in_a_chain():
+    def wound(heat_pulse_velocity, /):
+        return heat_pulse_velocity
+
+    with pytest.raises(ValueError, match=r"^stage 'wound' stands twice in heat_ratio$"):
+        stage(chain="heat_ratio")(wound)
 
 
 def test_every_module_of_the_package_is_imported():

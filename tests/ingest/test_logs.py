@@ -1,5 +1,7 @@
 """Finding and opening the files of a log; nothing in them is ever lost."""
 
+from pathlib import Path
+
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
@@ -39,6 +41,44 @@ def test_the_header_of_a_file(tmp_path):
     assert header(tmp_path, HEAD + ROWS) == ("TIMESTAMP", "A", "B")
     quoted = '"TABLE"\n"TIMESTAMP", "A b" ,C,\n'
     assert header(tmp_path, quoted, names_line=2) == ("TIMESTAMP", "A b", "C")
+
+
+def test_no_more_than_64_kb_of_a_file_are_read_for_its_header(tmp_path, monkeypatch):
+    path, opened = tmp_path / "T07.dat", Path.open
+    with path.open("wb") as file:
+        file.write((HEAD + ROWS).encode())
+        file.truncate(2**30)  # sparse: takes no room on disk
+    taken = []
+
+    class Counted:
+        def __init__(self, file):
+            self.file = file
+
+        def __enter__(self):
+            return self
+
+        def __exit__(self, *_):
+            self.file.close()
+
+        def read(self, size=-1):
+            taken.append(self.file.read(size))
+            return taken[-1]
+
+    monkeypatch.setattr(Path, "open", lambda self, *mode: Counted(opened(self, *mode)))
+    assert read_header(path, Layout()) == ("TIMESTAMP", "A", "B")
+    assert [len(part) for part in taken] == [65536]
+
+
+def test_a_line_that_the_first_64_kb_cut_is_no_header(tmp_path):
+    rows = "1\n" * 32760  # 16 bytes short of 64 kB
+    whole = "TIMESTAMP,A,B,C,D,E,F\n"
+    with pytest.raises(DataError) as caught:
+        header(tmp_path, rows + whole)
+    assert str(caught.value) == (
+        "T07.dat: no line of its first 64 kB holds the column names TIMESTAMP; line 1 is '1'. "
+        "Correct 'time_columns', 'delimiter' or 'encoding' of its layout."
+    )
+    assert header(tmp_path, rows[: -2 * 3] + whole)[-1] == "F"
 
 
 def test_a_header_that_cannot_be_read(tmp_path):

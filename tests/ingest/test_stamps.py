@@ -1,10 +1,11 @@
 """Text stamps become UTC ends of intervals."""
 
+from datetime import datetime, timedelta
+
 import numpy as np
 import pytest
 from log_by_hand import HEAD, column, ends, read, reasons
 
-from sapflux.ingest import stamps
 from sapflux.site.config import Layout
 
 
@@ -44,6 +45,17 @@ def test_many_stamps_of_a_format_without_fixed_width():
     assert len(series.end) == 72
     assert ends(series)[23:25] == ["2031-06-01T23:10", "2031-06-02T00:10"]
     assert reasons(series) == [(74, "time 'now' does not read as '%d/%m/%Y %H:%M'")]
+
+
+@pytest.mark.parametrize("clock", ["utc-3.5", "civil:Europe/Berlin"])
+def test_a_stamps_own_offset_goes_before_the_logs_clock(clock):
+    rows = "2031-06-01T15:10+02:00,1,2\n2031-06-01 15:20,3,4\n2031-06-01T24:00+02:00,5,6\n"
+    series = read(HEAD + rows, {"time_format": "%Y-%m-%dT%H:%M%z"}, clock=clock)
+    # Hour 24 of UTC+2 is 22 h UTC.
+    assert ends(series)[0] == "2031-06-01T13:10" and ends(series)[-1] == "2031-06-01T22:00"
+    assert reasons(series) == [
+        (3, "time '2031-06-01 15:20' does not read as '%Y-%m-%dT%H:%M%z'"),
+    ]
 
 
 def test_date_and_time_in_two_columns():
@@ -142,7 +154,8 @@ def test_fixed_width_stamps_agree_with_the_datetime_library():
     style = "%Y-%m-%d %H:%M:%S"
     moments = np.arange("1990-01-01", "2101-01-01", 100_003, dtype="M8[s]")
     texts = [str(moment).replace("T", " ") for moment in moments]
-    expected = [stamps._strptime(text, style) for text in texts]
+    since, microsecond = datetime(1970, 1, 1), timedelta(microseconds=1)
+    expected = [(datetime.strptime(text, style) - since) // microsecond for text in texts]
     sheet_text = "\n".join(["TIMESTAMP,A", *(f"{text},1" for text in texts)])
     from sapflux.ingest.parse import parse
 

@@ -64,7 +64,7 @@ def test_missing_weather_names_the_methods_that_do_without():
 def test_a_missing_table_is_named():
     assert faults(without(SITE, "wounds")) == [
         f"{RECIPE}, [[heat_ratio]] step 6: stage 'wound' needs wound_width, which neither the "
-        "site nor an earlier stage gives. The site would give it in wounds.csv."
+        "site nor an earlier stage gives. The site would give it in wounds.csv (width_mm)."
     ]
 
 
@@ -115,7 +115,7 @@ def test_a_ring_porous_species_under_the_general_calibration_needs_a_word():
     assert found == [
         f"{FOLDER}/species.csv, row 4: species 'oak' is ring-porous and would go under the "
         "general calibration, which reads such wood low by a factor of 2 to 5. Add its own to "
-        "calibrations.csv, or set general_calibration_accepted to true to take relative values "
+        "calibrations.csv, or set general_calibration_accepted to yes to take relative values "
         "knowingly."
     ]
     accepted = without(SITE, "calibrations")

@@ -7,6 +7,7 @@ import xarray as xr
 from sapflux import quality
 from sapflux.pipeline.execute import Chain, run_blocks
 from sapflux.pipeline.recipe import load_recipe
+from sapflux.stage import ORDER, REGISTRY
 
 COUNT = 48 * 20
 ENDS = np.datetime64("2031-10-01T00:30", "s") + np.arange(COUNT) * np.timedelta64(1800, "s")
@@ -78,6 +79,16 @@ def run(block_days):
         bits.append(working.quality["stand_species", "time"].isel(time=block.core).values)
     found = {name: np.concatenate(parts, axis=-1) for name, parts in found.items()}
     return found | {"quality": np.concatenate(bits, axis=-1)}
+
+
+def test_the_order_of_work_runs_from_the_point_to_the_stand():
+    assert {name for chain, name in REGISTRY if chain == "scaling"} == set(ORDER["scaling"])
+    made = {"flux_density", "origin"}
+    for name in ORDER["scaling"]:
+        stage = REGISTRY["scaling", name]
+        facts = set(beside(ENDS, ()))
+        assert set(stage.needs) <= made | facts, f"{name} stands before what it needs"
+        made |= set(stage.makes)
 
 
 @pytest.fixture(scope="module")

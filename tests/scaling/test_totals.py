@@ -5,6 +5,7 @@ import pytest
 import xarray as xr
 from stand_by_hand import CALENDAR, HOUR, MM_PER_H, at, deficit_of, hours, stand_of
 
+from sapflux import quality
 from sapflux.scaling.completeness import Completeness
 from sapflux.scaling.days import Calendar, daily_deficit, day_grid, stand_days, water_year_begin
 from sapflux.scaling.totals import (
@@ -294,6 +295,48 @@ def test_a_stand_with_the_same_reason_for_all_says_it_once():
     assert set(frame["trees"]) == {0}
 
 
+def stand_row(missing, deficit=None):
+    """The stand's row of June with whole days missing, species by species."""
+    rates = np.full((3, len(ENDS)), 0.1)
+    for rate, days in zip(rates, missing, strict=True):
+        for day in days:
+            rate[at(ENDS, f"2031-06-{day:02d}", f"2031-06-{day:02d}T23")] = NAN
+    wet = None if deficit is None else deficit_of(ENDS, np.full(30, deficit))
+    days = stand_days(stand_of(ENDS, rates), [1e-3] * 3, CALENDAR, vapour_pressure_deficit=wet)
+    return monthly(days).query("species == 'all'").iloc[0]
+
+
+@pytest.mark.parametrize(
+    ("missing", "reason"),
+    [
+        # pine, oak, beech; without a deficit no missing day is made up for
+        (([4], [], []), "pine: 1 day missing and no deficit to check for fair-weather bias"),
+        (([4], [9], []), "pine, oak: 1 day missing and no deficit to check for fair-weather bias"),
+        (([4], [9], [4]), "1 day missing and no deficit to check for fair-weather bias"),
+        (([4, 5], [], [9]), "refused for pine, beech: see their rows"),
+        (([4, 5], [6], [9]), "refused for pine, oak, beech: see their rows"),
+        (([], [], []), ""),
+    ],
+)
+def test_a_refused_stand_gives_one_reason_whole_and_of_several_the_species(missing, reason):
+    row = stand_row(missing)
+    assert row["reason"] == reason
+    assert row["valid"] == (reason == "")
+
+
+@pytest.mark.parametrize(
+    ("missing", "reason"),
+    [
+        (([4], [9], [4]), "1 of 30 days made up for"),
+        (([], [9], []), "oak: 1 of 30 days made up for"),
+        (([4, 5], [], [9]), "days made up for in pine, beech: see their rows"),
+    ],
+)
+def test_a_valid_stand_says_shortly_that_days_were_made_up_for(missing, reason):
+    row = stand_row(missing, deficit=900.0)
+    assert (row["valid"], row["reason"]) == (1, reason)
+
+
 def test_no_records_are_refused():
     with pytest.raises(ValueError, match=r"^no records to lay on days$"):
         day_grid(np.array([], dtype="datetime64[ns]"), CALENDAR)
@@ -363,3 +406,43 @@ def test_every_refused_row_says_why_and_is_empty(table):
     assert refused.any()
     assert (frame["transpiration_mm"].isna() == refused).all()
     assert (frame.loc[refused, "reason"] != "").all()
+
+
+def few(frame, ends, first, last, live):
+    """The stand with too few live trees from first to last."""
+    where = at(ends, first, last)
+    made = frame.copy(deep=True)
+    made["live_trees"].values[:, where] = live
+    made["stand_transpiration"].values[:, where] = np.nan
+    bits = np.zeros(made["stand_transpiration"].shape, np.int32)
+    bits[:, where] = quality.FLAGS["few_trees"].mask
+    made["quality"] = (("stand_species", "time"), bits)
+    return made
+
+
+@pytest.mark.parametrize(
+    ("first", "last", "live", "reason"),
+    [
+        ("2031-07-02T00", "2031-07-03T00", 2, "too few live trees: at most 2 at a time"),
+        ("2031-07-02T00", "2031-07-03T00", 0, "no instrumented tree has a value"),
+    ],
+)
+def test_a_day_refused_for_too_few_trees_says_so(first, last, live, reason):
+    ends = hours("2031-07-01", "2031-07-03")
+    stand = few(stand_of(ends, np.full(len(ends), 0.1)), ends, first, last, live)
+    frame = daily(stand_days(stand, [1e-3], CALENDAR))
+    own = frame.query("species == 'pine' and start == '2031-07-02'")
+    assert own["valid"].tolist() == [0]
+    assert own["reason"].tolist() == [reason]
+
+
+def test_a_day_refused_in_part_for_too_few_trees_says_for_how_long():
+    ends = hours("2031-07-01", "2031-07-03")
+    stand = stand_of(ends, np.full(len(ends), 0.1))
+    stand = few(stand, ends, "2031-07-02T08", "2031-07-02T16", 2)
+    frame = daily(stand_days(stand, [1e-3], CALENDAR))
+    (reason,) = frame.query("species == 'pine' and start == '2031-07-02'")["reason"]
+    assert reason.endswith(
+        "a daylight gap of 8 h, at most 2 h are allowed; 66.6 % of the records are there, 80 % "
+        "are needed (too few live trees for 8 h)"
+    )

@@ -3,6 +3,8 @@
 import pytest
 from folder_by_hand import faults_of, write_folder
 
+from sapflux.site.load import load_site
+
 # what is wrong -> (changes of the folder, its faults)
 CASES = {
     "from after to": (
@@ -134,6 +136,41 @@ CASES = {
             )
         ],
     ),
+    "one temperature of four": (
+        [
+            (
+                "channels.csv",
+                "H1,b1/ratio2,probe,b1,2,heat_ratio,1,,\n",
+                "H1,b1/T2,probe,b1,2,temperature_before_downstream,degC,,\n",
+            )
+        ],
+        [
+            (
+                "ridge/channels.csv, row 5: point 2 of probe 'b1' has "
+                "temperature_before_downstream and no temperature_after_downstream, "
+                "temperature_before_upstream, temperature_after_upstream. A point needs both "
+                "rises, all four temperatures, heat_ratio, log_heat_ratio or logged_velocity, for "
+                "the same time."
+            )
+        ],
+    ),
+    "one rise that ends before the other": (
+        [
+            (
+                "channels.csv",
+                "H1,b1/ratio2,probe,b1,2,heat_ratio,1,,\n",
+                "H1,b1/up2,probe,b1,2,rise_upstream,K,,2026-07-01\n"
+                "H1,b1/down2,probe,b1,2,rise_downstream,K,,\n",
+            )
+        ],
+        [
+            (
+                "ridge/channels.csv, row 6: point 2 of probe 'b1' has rise_downstream from "
+                "2026-07-01 to open and no rise_upstream. A point needs both rises, all four "
+                "temperatures, heat_ratio, log_heat_ratio or logged_velocity, for the same time."
+            )
+        ],
+    ),
     "too few names of a long table": (
         [("channels.csv", "b1/ratio2", "ratio2")],
         [
@@ -198,6 +235,53 @@ CASES = {
         ],
     ),
 }
+
+
+WHOLE = {
+    "both rises": ["rise_downstream,K,,", "rise_upstream,K,,"],
+    "four temperatures": [
+        f"temperature_{when}_{needle},degC,,"
+        for when in ("before", "after")
+        for needle in ("downstream", "upstream")
+    ],
+    "a rise and two temperatures": [
+        "rise_downstream,K,,",
+        "temperature_before_upstream,degC,,",
+        "temperature_after_upstream,degC,,",
+    ],
+    "log ratio": ["log_heat_ratio,1,,"],
+    "ratio, then rises, with a gap between": [
+        "heat_ratio,1,,2026-06-01",
+        "rise_downstream,K,2026-07-01,",
+        "rise_upstream,K,2026-07-01,",
+    ],
+}
+
+
+@pytest.mark.parametrize("case", WHOLE)
+def test_signals_that_make_a_ratio_together_are_right(case, tmp_path, monkeypatch):
+    monkeypatch.chdir(tmp_path)
+    rows = "".join(f"H1,b1/{n},probe,b1,2,{rest}\n" for n, rest in enumerate(WHOLE[case]))
+    change = ("channels.csv", "H1,b1/ratio2,probe,b1,2,heat_ratio,1,,\n", rows)
+    assert load_site(write_folder([change]))
+
+
+def test_a_rise_logged_on_after_the_probes_removal_is_right(tmp_path, monkeypatch):
+    monkeypatch.chdir(tmp_path)
+    rows = (
+        "H1,b1/up,probe,b1,2,rise_upstream,K,,2026-07-01\nH1,b1/dn,probe,b1,2,rise_downstream,K,,\n"
+    )
+    changes = [
+        ("channels.csv", "H1,b1/ratio2,probe,b1,2,heat_ratio,1,,\n", rows),
+        ("probes.csv", "60,100,0.0025,2026-04-01,\n", "60,100,0.0025,2026-04-01,2026-07-01\n"),
+    ]
+    assert load_site(write_folder(changes))
+
+
+def test_heat_dissipation_is_right_with_a_voltage_or_kelvin(tmp_path, monkeypatch):
+    monkeypatch.chdir(tmp_path)
+    for signal in ("heated_emf,mV", "heated_difference,K"):
+        assert load_site(write_folder([("channels.csv", "heated_emf,mV", signal)]))
 
 
 @pytest.mark.parametrize("case", CASES)

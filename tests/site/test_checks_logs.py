@@ -3,6 +3,9 @@
 import pytest
 from folder_by_hand import faults_of, write_folder
 
+from sapflux.ingest.logs import read_log
+from sapflux.site.load import load_site
+
 # what is wrong -> (changes of the folder, its faults)
 CASES = {
     "layout of a log that is not there": (
@@ -37,18 +40,28 @@ CASES = {
         [
             (
                 "ridge/site.toml, [layouts.wide]: time_format '%Y-%m-%d' does not say date, "
-                "hour and minute. Use strptime codes such as '%Y-%m-%d %H:%M:%S', without a "
-                "zone, or 'year_day_hhmm'."
+                "hour and minute. Use strptime codes such as '%Y-%m-%d %H:%M:%S', with %z where "
+                "a stamp carries its own offset from UTC, or 'year_day_hhmm'."
             )
         ],
     ),
-    "time format with a zone": (
-        [("site.toml", "units_line = 3", 'units_line = 3\ntime_format = "%Y-%m-%d %H:%M%z"')],
+    "time format with an offset and no hour": (
+        [("site.toml", "units_line = 3", 'units_line = 3\ntime_format = "%Y-%m-%d %z"')],
         [
             (
-                "ridge/site.toml, [layouts.wide]: time_format '%Y-%m-%d %H:%M%z' does not say "
-                "date, hour and minute. Use strptime codes such as '%Y-%m-%d %H:%M:%S', without "
-                "a zone, or 'year_day_hhmm'."
+                "ridge/site.toml, [layouts.wide]: time_format '%Y-%m-%d %z' does not say date, "
+                "hour and minute. Use strptime codes such as '%Y-%m-%d %H:%M:%S', with %z where "
+                "a stamp carries its own offset from UTC, or 'year_day_hhmm'."
+            )
+        ],
+    ),
+    "time format with the name of a zone": (
+        [("site.toml", "units_line = 3", 'units_line = 3\ntime_format = "%Y-%m-%d %H:%M %Z"')],
+        [
+            (
+                "ridge/site.toml, [layouts.wide]: time_format '%Y-%m-%d %H:%M %Z' does not say "
+                "date, hour and minute. Use strptime codes such as '%Y-%m-%d %H:%M:%S', with %z "
+                "where a stamp carries its own offset from UTC, or 'year_day_hhmm'."
             )
         ],
     ),
@@ -85,6 +98,21 @@ CASES = {
         ],
     ),
 }
+
+
+def test_stamps_with_their_own_offset_are_read_from_a_checked_folder(tmp_path, monkeypatch):
+    monkeypatch.chdir(tmp_path)
+    style = 'units_line = 3\ntime_format = "%Y-%m-%d %H:%M %z"'
+    folder = write_folder([("site.toml", "units_line = 3", style)])
+    (folder / "raw").mkdir()
+    (folder / "raw" / "T1_a.dat").write_text(
+        "TABLE\nTIMESTAMP,dT_a\nTS,mV\n2026-05-01 12:00 +0200,0.5\n2026-05-01 12:10,0.6\n"
+    )
+    series = read_log(load_site(folder), "T1")
+    assert [str(end) for end in series.end] == ["2026-05-01T10:00:00"]
+    assert [row[1:3] for row in series.rejected] == [
+        (5, "time '2026-05-01 12:10' does not read as '%Y-%m-%d %H:%M %z'")
+    ]
 
 
 @pytest.mark.parametrize("case", CASES)

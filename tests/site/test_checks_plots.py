@@ -1,4 +1,4 @@
-"""`stands.csv`, `plots.csv` and `surveys.csv`: each fault in full, and alone."""
+"""`stands.csv` and `plots.csv`: each fault in full, and alone."""
 
 import pytest
 from folder_by_hand import faults_of, write_folder
@@ -19,7 +19,10 @@ CASES = {
         ],
     ),
     "plot in an unknown stand": (
-        [("plots.csv", "P1,slope,400,,,\n", "P1,slope,400,,,\nP3,ridge,400,,,\n")],
+        [
+            ("plots.csv", "P1,slope,400,,,\n", "P1,slope,400,,,\nP3,ridge,400,,,\n"),
+            ("surveys.csv", "P2,D,", "P3,E,spruce,2026-04-01,12\nP2,D,"),
+        ],
         [("ridge/plots.csv, row 3: stand 'ridge' is not in stands.csv. Known: flat, slope.")],
     ),
     "plot without an area": (
@@ -89,31 +92,12 @@ CASES = {
             )
         ],
     ),
-    "stem twice on one date": (
-        [("surveys.csv", "P1,C,oak", "P1,B,beech")],
+    "stand with a name that parts": (
+        [("stands.csv", "flat\n", "flat\nnorth/1\n")],
         [
             (
-                "ridge/surveys.csv, row 4: stem 'B' of plot 'P1' stands in row 3 with the same "
-                "date 2026-04-01. Keep one of them, or name the stems apart."
-            )
-        ],
-    ),
-    "stem of an unknown plot": (
-        [("surveys.csv", "P2,D", "P7,D")],
-        ["ridge/surveys.csv, row 5: plot 'P7' is not in plots.csv. Known: P1, P2."],
-    ),
-    "stems of an unknown species": (
-        [
-            (
-                "surveys.csv",
-                "P2,D,spruce,2026-04-01,10\n",
-                "P2,D,birch,2026-04-01,10\nP2,E,birch,2026-04-01,11\n",
-            )
-        ],
-        [
-            (
-                "ridge/surveys.csv, row 5: species 'birch' is not in species.csv. Did you mean "
-                "'beech'? Known: beech, oak, spruce."
+                "ridge/stands.csv, row 4: stand 'north/1' has a '/'. Name it without one: outputs "
+                "write 'stand/species' and name files by it."
             )
         ],
     ),

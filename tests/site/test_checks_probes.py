@@ -5,6 +5,19 @@ from folder_by_hand import faults_of, write_folder
 
 # what is wrong -> (changes of the folder, its faults)
 CASES = {
+    "probe with a name that parts": (
+        [
+            ("probes.csv", "u1,A", "u/1,A"),
+            ("channels.csv", "probe,u1", "probe,u/1"),
+            ("pairs.csv", "u1,a1", "u/1,a1"),
+        ],
+        [
+            (
+                "ridge/probes.csv, row 3: probe 'u/1' has a '/'. Name it without one: outputs "
+                "write 'stand/species' and name files by it."
+            )
+        ],
+    ),
     "removed before installed": (
         [("probes.csv", "2026-04-01,2026-06-01", "2026-04-01,2026-03-01")],
         [

@@ -15,6 +15,24 @@ CASES = {
         ],
         [("ridge/species.csv, row 3: species 'spruce' stands in row 2 already. Keep one of them.")],
     ),
+    "species called as the whole stand": (
+        [("species.csv", "oak,ring", "all,ring"), ("surveys.csv", "P1,C,oak", "P1,C,all")],
+        [
+            (
+                "ridge/species.csv, row 4: a species is called 'all'. Give it another name: in "
+                "results this one is the whole stand."
+            )
+        ],
+    ),
+    "species with a name that parts": (
+        [("species.csv", "oak,ring", "oak/2,ring"), ("surveys.csv", "P1,C,oak", "P1,C,oak/2")],
+        [
+            (
+                "ridge/species.csv, row 4: species 'oak/2' has a '/'. Name it without one: outputs "
+                "write 'stand/species' and name files by it."
+            )
+        ],
+    ),
     "leaf on without leaf off": (
         [("species.csv", "04-20,10-20", "04-20,")],
         [

@@ -5,6 +5,15 @@ from folder_by_hand import faults_of, write_folder
 
 # what is wrong -> (changes of the folder, its faults)
 CASES = {
+    "tree with a name that parts": (
+        [("trees.csv", "B,slope,beech,\n", "B,slope,beech,\nC/1,slope,oak,\n")],
+        [
+            (
+                "ridge/trees.csv, row 4: tree 'C/1' has a '/'. Name it without one: outputs write "
+                "'stand/species' and name files by it."
+            )
+        ],
+    ),
     "tree twice": (
         [("trees.csv", "B,slope,beech,\n", "B,slope,beech,\nA,slope,spruce,\n")],
         [

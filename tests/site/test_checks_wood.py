@@ -218,6 +218,41 @@ CASES = {
             )
         ],
     ),
+    "nodes of two sources": (
+        [
+            (
+                "profiles.csv",
+                "spruce,,1,0.2,own,,\n",
+                "spruce,,1,0.2,own,,\nspruce,,0,0.9,a trial,,\n",
+            )
+        ],
+        [
+            (
+                "ridge/profiles.csv, row 4: the profile of 'spruce' has nodes of source 'a trial' "
+                "here and of 'own' in row 2. Two profiles do not mix: give each its own time, or "
+                "keep one of them."
+            )
+        ],
+    ),
+    "two calibrations of one date": (
+        [
+            (
+                "calibrations.csv",
+                "lab,spruce,119,1.23,0.1,0.9,own,2026-03-01\n",
+                (
+                    "lab,spruce,119,1.23,0.1,0.9,own,2026-03-01\n"
+                    "field,spruce,130,1.2,0.1,0.9,own,2026-03-01\n"
+                ),
+            )
+        ],
+        [
+            (
+                "ridge/calibrations.csv, row 3: species 'spruce' has a calibration for "
+                "heat_dissipation of 2026-03-01 in row 2 already. The latest counts: keep one of "
+                "them, or give the dates on which they were made."
+            )
+        ],
+    ),
     "calibration twice": (
         [
             (

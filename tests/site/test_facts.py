@@ -285,6 +285,14 @@ def test_facts_of_stands(site):
     assert laid["in_leaf"].values.tolist() == [[1, 1], [0, 1]]
 
 
+def test_a_record_that_ends_at_0_h_is_of_the_day_before():
+    # UTC-5: 0 h on 20 April is 05:00 UTC.
+    site = site_by_hand(-5.0)
+    days = site.day_of(np.array(["2032-04-20T05:00:00", "2032-04-20T05:00:01"], "datetime64[ns]"))
+    assert days.dtype == "datetime64[D]"
+    assert days.astype(str).tolist() == ["2032-04-19", "2032-04-20"]
+
+
 def leaf(on, off, offset=0.0, *moments):
     tables = TABLES | {"species": f"species,anatomy,leaf_on,leaf_off\noak,other,{on},{off}"}
     site = site_by_hand(offset, **tables)

@@ -5,6 +5,8 @@ from dataclasses import dataclass
 from datetime import datetime, timedelta
 from itertools import pairwise, product
 
+from sapflux.site.config import YEAR_DAY_HHMM, YEARS
+
 DATES = ("%Y-%m-%d", "%Y/%m/%d", "%d.%m.%Y", "%d/%m/%Y", "%m/%d/%Y", "%d-%m-%Y", "%m-%d-%Y",
          "%d.%m.%y", "%d/%m/%y", "%m/%d/%y", "%Y%m%d")  # fmt: skip
 CLOCKS = ("%H:%M:%S", "%H:%M", "%H:%M:%S.%f", "%I:%M:%S %p", "%I:%M %p")
@@ -15,7 +17,6 @@ FORMATS = [
     "%Y%m%d%H%M%S",
     "%Y%m%d%H%M",
 ]
-YEAR_DAY_HHMM = "year_day_hhmm"
 LOOKED_AT = 200  # records; a day-first date shows itself within them or is asked about
 FIRST_COLUMNS = 3  # a record number or the like may stand before the time
 READABLE = 0.9  # of the records; torn ones may not read
@@ -87,6 +88,6 @@ def written_moment(cells, times):
 
 def _year_day_hhmm(year, day, hhmm):
     hours, minutes = divmod(hhmm, 100)
-    if not (1990 <= year <= 2100 and 1 <= day <= 366 and 0 <= hours <= 24 and minutes < 60):
+    if not (YEARS[0] <= year <= YEARS[1] and 1 <= day <= 366 and 0 <= hours <= 24 and minutes < 60):
         return None
     return datetime(year, 1, 1) + timedelta(days=day - 1, hours=hours, minutes=minutes)
