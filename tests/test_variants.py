@@ -175,7 +175,8 @@ def test_a_mistyped_name_in_a_long_table_is_told(site, tmp_path):
         lambda text: (
             text
             + (
-                '\n[layouts.rows]\nlong = {name_columns = ["probe", "what"], value_column = "value"}\n'
+                "\n[layouts.rows]\n"
+                'long = {name_columns = ["probe", "what"], value_column = "value"}\n'
                 '\n[logs.rows]\nfiles = ["raw/long.csv"]\nlayout = "rows"\ninterval_min = 10.0\n'
                 'stamp = "end"\nclock = "utc"\n'
             )
