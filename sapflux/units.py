@@ -1,5 +1,7 @@
 """Units of logger columns and tables, and how they become SI."""
 
+import re
+
 from sapflux.constants import ZERO_CELSIUS
 
 # Factors to SI. Exact by definition (SI brochure, 9th edition, 2019).
@@ -84,3 +86,13 @@ def factor_of_key(key):
     (0.001, 1.0, 1.0)
     """
     return KEY_FACTORS.get(unit_of_key(key), 1.0)
+
+
+def unit_of_key(key):
+    """The unit a config key carries after its name, or '' if it carries none.
+
+    >>> unit_of_key("wound_width_mm")
+    'mm'
+    """
+    found = re.search(r"_(mm|cm|m2|m|K|kPa|Pa|h|min|s|d|deg|V|ohm|cm2_s|kg_m3|g_m2_s|J_m)$", key)
+    return found.group(1) if found else ""
