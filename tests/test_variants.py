@@ -7,7 +7,7 @@ import numpy as np
 import pytest
 
 from sapflux import quality, run_site
-from sapflux.errors import SiteError
+from sapflux.errors import DataError, SiteError
 from sapflux.pipeline.check import check_site
 
 SITE = Path(__file__).parents[1] / "configs" / "orvelin"
@@ -211,3 +211,15 @@ def test_the_files_say_where_along_the_needle_a_value_was_measured(tmp_path):
     trees = run.trees
     assert "quality" in trees["tree_flow"].attrs["ancillary_variables"]
     assert quality.has(trees["quality"].values, "heater_failure").any()
+
+
+def test_channels_that_leave_no_record_of_a_probe_are_told(site, tmp_path):
+    head, *rows = (site / "channels.csv").read_text().splitlines()
+    late = [f"{row},2040-01-01" for row in rows]
+    (site / "channels.csv").write_text("\n".join([head + ",from", *late]) + "\n")
+    with pytest.raises(DataError) as caught:
+        run_site(site, out=tmp_path / "out")
+    assert str(caught.value) == (
+        f"{site}: the downloads hold no record of a probe. Run `sapflux check {site}`; see from "
+        "and to in channels.csv."
+    )

@@ -4,6 +4,7 @@ from itertools import pairwise
 
 from sapflux.errors import Fault
 from sapflux.site.inventory import (
+    bark_thickness,
     core_rows,
     latest_survey,
     sapwood_depth,
@@ -138,6 +139,13 @@ def tree_faults(reading):
                 f"tree {row.tree!r} is {radius * MM_PER_M:.0f} mm",
                 "Depths are in mm below cambium, diameters in cm.",
             )
+        elif row.needle_length_mm and row.needle_length_mm > _through_bark_mm(site, row, radius):
+            yield Fault(
+                where,
+                f"needle_length_mm is {row.needle_length_mm:g} and the stem of tree {row.tree!r} "
+                f"has {_through_bark_mm(site, row, radius):.0f} mm from bark to pith",
+                "Lengths of needles are in mm, diameters in cm.",
+            )
         if (
             row.method in SAP_FLOW
             and row.tree not in told
@@ -145,6 +153,10 @@ def tree_faults(reading):
         ):
             told.add(row.tree)
             yield from _sapwood_fault(where, sits, site, tree)
+
+
+def _through_bark_mm(site, row, radius):
+    return (radius + (bark_thickness(site, row.tree) or 0.0)) * MM_PER_M
 
 
 def _sapwood_fault(where, sits, site, tree):

@@ -2,7 +2,13 @@
 
 from sapflux.errors import Fault
 from sapflux.site.checks_probes import SAP_FLOW
-from sapflux.site.inventory import core_rows, latest_survey, living_stems, tree_row
+from sapflux.site.inventory import (
+    core_rows,
+    is_beyond_disc,
+    latest_survey,
+    living_stems,
+    tree_row,
+)
 from sapflux.site.reading import parted, repeats
 
 WHOLE_STAND = "all"  # how tables name the sum of a stand's species
@@ -120,4 +126,26 @@ def sapwood_faults(reading):
             )
 
 
-CHECKS = (row_faults, stand_in_faults, sapwood_faults)
+def allometry_faults(reading):
+    """Species whose allometry gives most of their stems more sapwood than they have wood."""
+    if not reading.are_whole("probes", "trees", "surveys", "plots", "cores"):
+        return
+    # A tree with probes is told with its probe.
+    probed = {row.tree for row in reading.site.table("probes") if row.method in SAP_FLOW}
+    judged = {}
+    for _, stem in living_stems(reading.site):
+        if stem.stem not in probed:
+            judged.setdefault(stem.species, []).append(is_beyond_disc(reading.site, stem))
+    for where, row in reading.rows("species"):
+        stems = judged.get(row.species, [])
+        if sum(stems) > len(stems) / 2:
+            yield Fault(
+                where,
+                f"the allometry of species {row.species!r} gives {sum(stems)} of {len(stems)} "
+                "stems without probes more sapwood than they have wood",
+                "Sapwood area in cm2 is sapwood_area_a_cm2 times the diameter over bark in cm to "
+                "the power of sapwood_area_b.",
+            )
+
+
+CHECKS = (row_faults, stand_in_faults, sapwood_faults, allometry_faults)

@@ -169,6 +169,15 @@ def stem_sapwood_area(row, cores, bark, species):
     return species.sapwood_area_a_cm2 * diameter_cm**species.sapwood_area_b * CM2
 
 
+def is_beyond_disc(site, row):
+    """Whether a surveyed stem has more sapwood, by its allometry, than it has wood."""
+    known = tree_row(site, row.stem)
+    stand = known.stand if known is not None else None
+    given = _stem(site, stand, row)
+    area, radius = stem_sapwood_area(row, **given), _radius_inside_bark(row, given["bark"])
+    return area is not None and (radius is None or area > math.pi * radius**2)
+
+
 def sapwood_per_ground(site):
     """(stand, species) -> conducting sapwood area per plan ground area [m2 m-2]."""
     return {key: part.sapwood_per_ground for key, part in composition(site).items()}

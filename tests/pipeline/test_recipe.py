@@ -162,3 +162,9 @@ def test_a_recipe_file_that_is_not_toml(tmp_path):
     with pytest.raises(RecipeError) as caught:
         load_recipe(str(path))
     assert str(caught.value).startswith(f"{path}: not readable as TOML: ")
+
+
+def test_a_part_that_is_no_table():
+    assert faults(HEAD.replace("[[", "join = 1\n[[", 1)) == [
+        "oak.toml, [join]: not a table. Write its keys under [join]."
+    ]

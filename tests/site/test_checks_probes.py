@@ -139,6 +139,21 @@ CASES = {
             )
         ],
     ),
+    "needle longer than the stem is thick": (
+        [
+            (
+                "probes.csv",
+                "0,20,20,,,,,,2026-04-01,2026-06-01",
+                "0,20,300,,,,,,2026-04-01,2026-06-01",
+            )
+        ],
+        [
+            (
+                "ridge/probes.csv, row 2: needle_length_mm is 300 and the stem of tree 'A' has "
+                "150 mm from bark to pith. Lengths of needles are in mm, diameters in cm."
+            )
+        ],
+    ),
     "tree without a diameter": (
         [("surveys.csv", "P1,A,spruce", "P1,X,spruce")],
         [

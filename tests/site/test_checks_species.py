@@ -105,6 +105,16 @@ CASES = {
             )
         ],
     ),
+    "allometry beyond the disc": (
+        [("species.csv", "0.3,1.7", "30,1.7")],
+        [
+            (
+                "ridge/species.csv, row 4: the allometry of species 'oak' gives 1 of 1 stems "
+                "without probes more sapwood than they have wood. Sapwood area in cm2 is "
+                "sapwood_area_a_cm2 times the diameter over bark in cm to the power of sapwood_area_b."
+            )
+        ],
+    ),
     "stems without cores or allometry": (
         [("species.csv", "0.3,1.7", ",")],
         [

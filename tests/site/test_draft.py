@@ -269,3 +269,7 @@ def test_every_file_that_cannot_be_made_out_is_told_and_nothing_written():
         "absent.dat: the file cannot be read (No such file or directory). Name a logger file.",
     ]
     assert not Path("site").exists()
+
+
+def test_no_file_at_all():
+    assert faults_of(draft_from_files, "site", []) == ["site: no logger file is given. Name some."]

@@ -391,3 +391,12 @@ def test_faults_of_the_toml_and_of_tables_come_at_once():
         "ridge/site.toml, [site]",
         "ridge/cores.csv, row 3",
     ]
+
+
+def test_logs_that_are_no_group_of_sections():
+    text = TEXTS["site.toml"]
+    folder = with_bytes("site.toml", ("logs = 1\n" + text.partition("[logs.T1]")[0]).encode())
+    assert faults_of(folder)[0] == (
+        "ridge/site.toml, logs: logs is not a group of sections. Begin each with a line like "
+        "[logs.NAME]."
+    )
