@@ -8,6 +8,7 @@ import pytest
 
 from sapflux import quality, run_site
 from sapflux.errors import DataError, SiteError
+from sapflux.pipeline.api import summary
 from sapflux.pipeline.check import check_site
 
 SITE = Path(__file__).parents[1] / "configs" / "orvelin"
@@ -55,6 +56,8 @@ def test_excluded_weather_sets_no_baseline(site, tmp_path):
     run = run_site(site, out=tmp_path / "out")
     assert run.table("zero_flow_nights")["accepted"].sum() == 0
     assert quality.has(run.probes["quality"].sel(probe="P01", point=1).values, "no_baseline").all()
+    (note,) = [text for text in run.record["notes"] if "(no_baseline)" in text]
+    assert note.startswith("P01, P02, ") and "P15: hardly any record can be used: " in note
 
 
 def move_p01(site):
@@ -223,3 +226,15 @@ def test_channels_that_leave_no_record_of_a_probe_are_told(site, tmp_path):
         f"{site}: the downloads hold no record of a probe. Run `sapflux check {site}`; see from "
         "and to in channels.csv."
     )
+
+
+def test_a_column_in_the_wrong_unit_empties_the_totals_and_the_reason_is_told(site, tmp_path):
+    edit(site, "channels.csv", lambda text: text.replace("heated_emf,mV", "heated_emf,V"))
+    run = run_site(site, out=tmp_path / "out")
+    (note,) = [text for text in run.record["notes"] if "(out_of_range)" in text]
+    assert note == (
+        "P01, P02, P03, P04, P05, P06, P07, P08, P09, P10: hardly any record can be used: beyond "
+        "what the instrument can give (out_of_range)"
+    )
+    (told,) = summary(run)["refused"]
+    assert told.startswith("upper: 70 days refused, most often because: no instrumented tree has")

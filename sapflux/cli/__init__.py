@@ -5,6 +5,7 @@ but some sites failed; 130 interrupted.
 """
 
 import argparse
+import os
 import sys
 
 from sapflux import __version__
@@ -21,7 +22,9 @@ def main(arguments=None):
     from sapflux.errors import RecipeError, SiteError, UserError
 
     try:
-        return options.command(options)
+        code = options.command(options)
+        sys.stdout.flush()
+        return code
     except (SiteError, RecipeError) as error:
         return _tell(error, USAGE)
     except UserError as error:
@@ -29,8 +32,15 @@ def main(arguments=None):
     except KeyboardInterrupt:
         print("interrupted; what was finished before stands as it was", file=sys.stderr)
         return INTERRUPTED
-    except BrokenPipeError:
+    except BrokenPipeError:  # who reads has seen enough
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
         return DONE
+    except OSError as error:
+        if error.filename is not None:
+            raise
+        print(f"the output cannot be written ({error.strerror})", file=sys.stderr)
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return FAILED
 
 
 def _tell(error, code):
@@ -95,6 +105,12 @@ def parser():
     stages = commands.add_parser("stages", help="what each stage does, its settings and sources")
     stages.add_argument("name", metavar="NAME", nargs="?", help="one stage, in full")
     stages.add_argument("--json", action="store_true", help="print JSON alone")
+    stages.add_argument(
+        "--recipe", metavar="RECIPE", help="print a recipe, to be changed as a file"
+    )
+    stages.add_argument(
+        "--quantities", action="store_true", help="what a logger column may be, and in which units"
+    )
     stages.set_defaults(command=_stages)
     return top
 
@@ -111,7 +127,7 @@ def _sites(command):
 
 
 def _count(text):
-    number = int(text)
+    number = int(text) if text.isdecimal() else 0
     if number < 1:
         raise argparse.ArgumentTypeError("takes a whole number from 1")
     return number

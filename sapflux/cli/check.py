@@ -2,6 +2,7 @@
 
 import sys
 
+from sapflux.cli import DONE, USAGE
 from sapflux.cli.text import columns, count, note, print_json
 from sapflux.errors import UserError
 from sapflux.pipeline.check import check_site
@@ -20,7 +21,7 @@ def check(options):
     else:
         for path, report in reports.items():
             _print(path, report)
-    return 2 if any(report["faults"] for report in reports.values()) else 0
+    return USAGE if any(report["faults"] for report in reports.values()) else DONE
 
 
 def _print(path, report):

@@ -1,8 +1,11 @@
 """`sapflux run`: one site or many; a failing site does not stop the others."""
 
 import sys
+from pathlib import Path
 
+from sapflux.cli import DONE, FAILED, SOME_FAILED, USAGE
 from sapflux.cli.text import columns, count, millimetres, note, print_json, share
+from sapflux.errors import UserError
 from sapflux.pipeline.batch import dry_run, run_sites
 
 CAUTIONS = (
@@ -30,7 +33,9 @@ def run(options):
     ):
         outcomes.append(outcome)
         if not options.json:
-            _print(outcome, several)
+            _print(outcome, several, options)
+    given = [str(site) for site in options.sites]
+    outcomes.sort(key=lambda outcome: given.index(outcome.path))
     failed = [outcome for outcome in outcomes if outcome.faults]
     if options.json:
         print_json(
@@ -39,32 +44,50 @@ def run(options):
     elif several:
         _print_summary(outcomes)
     if not failed:
-        return 0
+        return DONE
     if len(failed) < len(outcomes):
-        return 3
-    return 2 if all(outcome.usage for outcome in failed) else 1
+        return SOME_FAILED
+    return USAGE if all(outcome.usage for outcome in failed) else FAILED
 
 
 def _dry_run(options):
-    plans = {path: dry_run(path, options.recipe) for path in options.sites}
+    """Say what a run would do; a site at fault stops no other, and gives exit code 2."""
+    plans = {}
+    for path in options.sites:
+        try:
+            plans[path] = dry_run(path, options.recipe)
+        except UserError as error:
+            plans[path] = {"faults": [str(fault) for fault in error.faults]}
     if options.json:
         print_json(plans)
-        return 0
-    for path, plan in plans.items():
-        print(f"{path}: {plan['site']}; recipe {plan['recipe']}")
-        for name, files in plan["files"].items():
-            print(f"  log {name}: {count(len(files), 'file')}")
-        for line in plan["steps"]:
-            print(f"  {line}")
+    else:
+        for path, plan in plans.items():
+            _print_plan(path, plan)
         print("Nothing was run.")
-    return 0
+    return USAGE if any("faults" in plan for plan in plans.values()) else DONE
 
 
-def _print(outcome, several):
+def _print_plan(path, plan):
+    for fault in plan.get("faults", ()):
+        print(fault, file=sys.stderr)
+    if "faults" in plan:
+        return
+    print(f"{path}: {plan['site']}; recipe {plan['recipe']}")
+    for name, files in plan["files"].items():
+        print(f"  log {name}: {count(len(files), 'file')}")
+        for file in files:
+            print(f"    {file}")
+    for line in plan["steps"]:
+        print(f"  {line}")
+
+
+def _print(outcome, several, options):
     if outcome.faults:
         for fault in outcome.faults:
             print(fault, file=sys.stderr)
-        print(f"{outcome.path}: failed; its former results stand as they were", file=sys.stderr)
+        former = (Path(options.out) / Path(outcome.path).resolve().name / "run.json").is_file()
+        stands = "; its former results stand as they were" if former else ""
+        print(f"{outcome.path}: failed{stands}", file=sys.stderr)
         return
     found = outcome.summary
     print(f"{found['site']}, {found['from']} to {found['to']}, recipe {found['recipe']}")
@@ -89,7 +112,7 @@ def _print(outcome, several):
     for line in columns(rows, header, right=header[2:7]):
         print(f"  {line}")
     print()
-    for text in found["notes"]:
+    for text in [*found["refused"], *found["notes"]]:
         print(note(text))
     print(f"\n  Written to {found['folder']} ({found['seconds']:.1f} s), run {found['identity']}:")
     for line in columns([[name, what] for name, what in found["written"]], ["", ""])[1:]:

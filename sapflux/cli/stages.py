@@ -7,9 +7,10 @@ from typing import Literal, get_args, get_origin
 
 import sapflux.correction
 import sapflux.scaling
+from sapflux.cli import DONE, USAGE
 from sapflux.cli.text import columns, print_json
 from sapflux.errors import nearest
-from sapflux.pipeline.recipe import PARTS, known_settings
+from sapflux.pipeline.recipe import PARTS, find_recipe, known_settings
 from sapflux.stage import ORDER, REGISTRY
 
 _ = (sapflux.correction, sapflux.scaling)  # imported for the stages they register
@@ -17,12 +18,15 @@ _ = (sapflux.correction, sapflux.scaling)  # imported for the stages they regist
 
 def stages(options):
     """List all stages, or explain one in full; exit code 2 for an unknown name."""
+    if options.recipe:
+        print(find_recipe(options.recipe).read_text(encoding="utf-8"), end="")
+        return DONE
     found = [stage for (_, name), stage in REGISTRY.items() if options.name in (None, name)]
     parts = [part for part in PARTS if options.name in (None, part, *known_settings(part))]
     if not found and not parts:
         known = {name for _, name in REGISTRY} | PARTS.keys()
         print(f"no stage {options.name!r}. {nearest(options.name, known)}", file=sys.stderr)
-        return 2
+        return USAGE
     if options.json:
         print_json([*map(describe, found), *map(describe_part, parts)])
     elif options.name:
@@ -30,7 +34,7 @@ def stages(options):
             _explain(description)
     else:
         _list(found)
-    return 0
+    return DONE
 
 
 def describe_part(part):

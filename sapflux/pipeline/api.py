@@ -9,6 +9,7 @@ from pathlib import Path
 import pandas as pd
 import xarray as xr
 
+from sapflux.errors import Fault, UserError, nearest
 from sapflux.pipeline.compute import compute
 from sapflux.pipeline.execute import BLOCK_DAYS
 from sapflux.pipeline.outputs import run_identity, write_run
@@ -29,13 +30,23 @@ class Run:
 
     def table(self, name):
         """A table of the run as a DataFrame, for example `table("daily")`."""
-        frame = pd.read_csv(self.folder / f"{name}.csv", dtype=dict.fromkeys(TEXTS, str))
+        path = self._file(name, ".csv", "table")
+        frame = pd.read_csv(path, dtype=dict.fromkeys(TEXTS, str))
         texts = [column for column in TEXTS if column in frame]
         return frame.fillna(dict.fromkeys(texts, ""))
 
     def dataset(self, name):
         """A netCDF file of the run, opened lazily: "probes", "trees", "stand", "origin", ..."""
-        return xr.open_dataset(self.folder / f"{name}.nc", decode_timedelta=False)
+        return xr.open_dataset(self._file(name, ".nc", "file"), decode_timedelta=False)
+
+    def _file(self, name, suffix, kind):
+        path = self.folder / f"{name}{suffix}"
+        if not path.is_file():
+            known = [own.stem for own in self.folder.glob(f"*{suffix}")]
+            raise UserError(
+                Fault(str(self.folder), f"no {kind} {name!r} in this run", nearest(name, known))
+            )
+        return path
 
     @cached_property
     def record(self):
@@ -74,8 +85,8 @@ def run_site(
     keep_all : keep every file of earlier runs; block_days : length of a block in time [d], which
     changes no result.
 
-    Raises SiteError, RecipeError or DataError, each with every fault found; the former result
-    then stands as it was.
+    Raises SiteError, RecipeError or DataError, each with every fault found, and UserError where
+    the results cannot be written; the former result then stands as it was.
     """
     start = time.perf_counter()
     site = load_site(path)
@@ -106,6 +117,7 @@ def summary(run):
         "files": len(ledger),
         "ledger": {name: int(number) for name, number in classes.items()},
         "season": season.to_dict("records"),
+        "refused": [*refused_days(daily)],
         "notes": run.record["notes"],
         "folder": str(run.folder),
         "identity": run.record["identity"],
@@ -114,3 +126,16 @@ def summary(run):
             for path in sorted(run.folder.iterdir())
         ],
     }
+
+
+def refused_days(daily):
+    """A sentence for each stand with refused days: how many, and the commonest reason."""
+    whole = daily[(daily["species"] == "all") & (daily["valid"] == 0)]
+    for stand, own in whole.groupby("stand", sort=False):
+        parts = daily[(daily["stand"] == stand) & (daily["valid"] == 0)]
+        reasons = parts[parts["species"] != "all"]["reason"].value_counts()
+        days = "day" if len(own) == 1 else "days"
+        yield (
+            f"{stand}: {len(own)} {days} refused, most often because: {reasons.index[0]} "
+            "(daily.csv has each)"
+        )

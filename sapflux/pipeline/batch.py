@@ -1,14 +1,17 @@
 """Many sites: each on its own, one failing site stops no other."""
 
+import signal
 import time
 import traceback
 from concurrent.futures import ProcessPoolExecutor, as_completed
 from dataclasses import dataclass, field
+from pathlib import Path
 
 from sapflux.errors import Fault, RecipeError, SiteError, UserError
 from sapflux.ingest.logs import match_files
 from sapflux.pipeline.api import run_site, summary
-from sapflux.pipeline.plan import check_plan
+from sapflux.pipeline.check import header_faults
+from sapflux.pipeline.plan import methods_of, plan_faults
 from sapflux.pipeline.recipe import load_recipe
 from sapflux.site.load import load_site
 
@@ -34,16 +37,49 @@ def run_sites(paths, *, jobs=1, scheduler=None, **options):
     UserError where the scheduler cannot be used.
     """
     paths = [str(path) for path in paths]
+    _check_keys(paths)
     if scheduler:
         yield from _on_cluster(paths, scheduler, options)
     elif jobs == 1 or len(paths) == 1:
         for path in paths:
             yield run_one(path, **options)
     else:
-        with ProcessPoolExecutor(max_workers=min(jobs, len(paths))) as pool:
-            waiting = {pool.submit(run_one, path, **options): path for path in paths}
-            for future in as_completed(waiting):
-                yield _outcome(future, waiting[future])
+        yield from _in_processes(paths, min(jobs, len(paths)), options)
+
+
+def _check_keys(paths):
+    """UserError where two sites would share a folder of results."""
+    places = {}
+    for path in paths:
+        places.setdefault(Path(path).resolve().name, []).append(path)
+    faults = [
+        Fault(
+            ", ".join(own),
+            f"sites of the same folder name {key!r} would share their results",
+            "Name each site once, give each folder its own name, or run them with another --out.",
+        )
+        for key, own in places.items()
+        if len(own) > 1
+    ]
+    if faults:
+        raise UserError(faults)
+
+
+def _in_processes(paths, workers, options):
+    """Outcomes from worker processes, which leave an interrupt to this one."""
+    pool = ProcessPoolExecutor(workers, initializer=signal.signal,
+                               initargs=(signal.SIGINT, signal.SIG_IGN))  # fmt: skip
+    try:
+        waiting = {pool.submit(run_one, path, **options): path for path in paths}
+        for future in as_completed(waiting):
+            yield _outcome(future, waiting[future])
+    except BaseException:
+        # Interrupted: whoever still works is stopped. A run is published whole or not at all.
+        for worker in list((pool._processes or {}).values()):
+            worker.terminate()
+        pool.shutdown(wait=False, cancel_futures=True)
+        raise
+    pool.shutdown()
 
 
 def _on_cluster(paths, address, options):
@@ -100,10 +136,14 @@ def run_one(path, **options):
 def dry_run(path, recipe):
     """What a run would read and do."""
     site, chosen = load_site(path), load_recipe(recipe)
-    check_plan(site, chosen)
+    faults = [*header_faults(site)[0], *plan_faults(site, chosen)]
+    if faults:
+        raise SiteError(faults)
+    methods = {*methods_of(site), "scaling"}
+    steps = [s.line() for chain, own in chosen.chains.items() if chain in methods for s in own]
     return {
         "site": site.position.name,
         "recipe": chosen.name,
         "files": {name: [str(p) for p in match_files(site, name)] for name in site.logs},
-        "steps": [step.line() for steps in chosen.chains.values() for step in steps],
+        "steps": steps,
     }

@@ -16,7 +16,7 @@ from sapflux.pipeline.check import header_faults, unheard_channels
 from sapflux.pipeline.execute import BLOCK_DAYS, Chain, fitted_tables, run_blocks
 from sapflux.pipeline.installation_lives import FlagCounts, installation_table
 from sapflux.pipeline.join import Joined, common_grid
-from sapflux.pipeline.notes import notes_of
+from sapflux.pipeline.notes import notes_of, notes_of_lives
 from sapflux.pipeline.scale import ground_of, labelled, scale
 from sapflux.pipeline.total_tables import total_tables
 from sapflux.scaling.whole_stands import with_whole_stands
@@ -80,7 +80,9 @@ def compute(site, recipe, *, native=False, block_days=BLOCK_DAYS):
     found.evidence |= scaled.tables
     found.history += [step.line() for step in recipe.chains["scaling"]]
     stopwatch.lap("scale")
-    found.tables["installations"] = installation_table(site, counts, found.evidence)
+    lives = installation_table(site, counts, found.evidence)
+    found.tables["installations"] = lives
+    found.notes += notes_of_lives(lives, found.evidence)
     found.tables |= total_tables(site, recipe, found, weather)
     if found.stand is not None:
         found.stand = with_whole_stands(found.stand, ground_of(site, ends))

@@ -1,9 +1,13 @@
 """What a person should know of a run before using its numbers: fallbacks that were taken."""
 
+from sapflux import quality
 from sapflux.ingest.cube import METHODS
 from sapflux.site.inventory import bark_known, composition, sapwood_depth, tree_row
 
 MM_PER_M = 1000.0
+LEAST_USABLE = 0.2  # share of usable records below which a probe is told of: own judgement
+NEARLY_ALL = 0.9
+NIGHTS_OF = {"no_baseline": "zero_flow_nights", "unusable_offset": "zero_offset_nights"}
 
 GENERAL = (
     "general calibration of heat dissipation for {}: published comparisons find it low by 35 to "
@@ -134,6 +138,39 @@ def _needles(site, recipe):
 def _probed_trees(site):
     names = {probe.tree for probe in site.table("probes") if probe.method in METHODS}
     return [row for row in site.table("trees") if row.tree in names]
+
+
+def notes_of_lives(lives, evidence):
+    """Notes on probes of which next to nothing can be used, and why.
+
+    lives : the table of installations; evidence : tables of the summarising stages.
+    """
+    poor = lives[(lives["records"] > 0) & (lives["usable_fraction"] < LEAST_USABLE)]
+    masking = [name for name in quality.NATIVE if quality.FLAGS[name].masks]
+    causes = poor[[f"{name}_fraction" for name in masking]].to_numpy()
+    groups = {}
+    for probe, shares in zip(poor["probe"], causes, strict=True):
+        # Flags stand in the order of work: of those that take nearly all, the first is the cause.
+        first = int((shares >= NEARLY_ALL * shares.max()).argmax())
+        groups.setdefault(masking[first], []).append(probe)
+    for flag, probes in groups.items():
+        meaning = quality.FLAGS[flag].meaning
+        nights = _nights(evidence.get(NIGHTS_OF.get(flag)), probes)
+        yield (f"{_listed(set(probes))}: hardly any record can be used: {meaning} ({flag}){nights}")
+
+
+def _nights(nights, probes):
+    """What most often kept the nights of these probes from being accepted."""
+    if nights is None:
+        return ""
+    refused = nights[nights["probe"].isin(probes) & ~nights["accepted"].astype(bool)]
+    if not len(refused):
+        return ""
+    kinds = refused["reason"].str.replace(r"\d+(\.\d+)?", "x", regex=True)
+    kind = kinds.value_counts().index[0]
+    example = refused["reason"][kinds == kind].iloc[0]
+    share = (kinds == kind).mean()
+    return f"; of its refused nights {share:.0%} for a reason like: {example}"
 
 
 def _listed(names):

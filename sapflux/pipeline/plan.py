@@ -84,7 +84,7 @@ def _remedy(stage, method, name, available):
         remedy = f"The site would give it in {source_in_words(name)}."
     elif name == "vapour_pressure_deficit":
         remedy = (
-            "The site would give it by channels of vapour_pressure_deficit, or of "
+            "The site would give it by channels of kind site: vapour_pressure_deficit, or "
             "air_temperature and relative_humidity."
         )
     others = [
@@ -93,7 +93,10 @@ def _remedy(stage, method, name, available):
         if other != method and set(stage.method_needs.get(other, ())) <= available
     ]
     if others and name in stage.method_needs.get(method, ()):
-        remedy += f" Methods that do without: {', '.join(others)}."
+        remedy += (
+            f" Methods that do without: {', '.join(others)}; change it in a copy of the recipe "
+            "(`sapflux stages --recipe NAME` prints one)."
+        )
     return remedy.strip() or "Add a stage that makes it before this one."
 
 

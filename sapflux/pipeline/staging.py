@@ -188,6 +188,8 @@ TROUBLES = {
     errno.EFBIG: ("a file grew larger than it may", "Raise the limit or choose another --out"),
     errno.EROFS: ("the file system may only be read", "Choose another --out"),
     errno.ENOTDIR: ("a part of the path is a file", "Choose another --out"),
+    errno.EEXIST: ("--out, or a part of its path, is a file", "Choose another --out"),
+    errno.ENOENT: ("the folder cannot be made", "Choose another --out"),
     errno.EIO: ("the disk cannot be written", "Choose another --out"),
 }
 HELD = (

@@ -203,3 +203,79 @@ def test_the_module_runs_like_the_command():
         [sys.executable, "-m", "sapflux", "--version"], capture_output=True, text=True, cwd=ROOT
     )
     assert told.stdout.startswith("sapflux 0.")
+
+
+def test_two_sites_of_one_name_are_refused(tmp_path, capsys):
+    import shutil
+
+    twin = tmp_path / "other" / "orvelin"
+    shutil.copytree(SITE, twin)
+    assert main(["run", SITE, str(twin), "--out", str(tmp_path / "out")]) == 1
+    assert (
+        f"{SITE}, {twin}: sites of the same folder name 'orvelin' would share their results. Name "
+        "each site once, give each folder its own name, or run them with another --out."
+    ) in capsys.readouterr().err
+    assert not (tmp_path / "out").exists()
+
+
+def test_results_that_are_a_file_are_told(tmp_path, capsys):
+    (tmp_path / "results").write_text("mine")
+    assert main(["run", SITE, "--out", str(tmp_path / "results")]) == 1
+    told = capsys.readouterr().err
+    assert "--out, or a part of its path, is a file" in told and "Traceback" not in told
+
+
+def test_a_recipe_can_be_printed_changed_and_used(tmp_path, capsys):
+    assert main(["stages", "--recipe", "stand_water_use"]) == 0
+    text = capsys.readouterr().out.replace('method = "quiet_nights"', 'method = "nightly_maximum"')
+    mine = tmp_path / "mine.toml"
+    mine.write_text(text)
+    assert main(["run", SITE, "--recipe", str(mine), "--dry-run"]) == 0
+    assert "zero_flow_difference(method='nightly_maximum'" in capsys.readouterr().out
+
+
+def test_a_dry_run_lists_files_and_goes_on_after_a_fault(starter, tmp_path, capsys):
+    folder = broken(starter, tmp_path)
+    assert main(["run", str(folder), SITE, "--dry-run"]) == 2
+    told = capsys.readouterr()
+    assert "upper_2031-09-03_copy.dat" in told.out and "latitude" in told.err
+
+
+def test_jobs_takes_a_whole_number(capsys):
+    with pytest.raises(SystemExit) as caught:
+        main(["run", SITE, "--jobs", "x"])
+    assert caught.value.code == 2
+    assert "argument --jobs: takes a whole number from 1" in capsys.readouterr().err
+
+
+def test_an_unknown_table_of_a_run_names_those_there_are(tmp_path):
+    from sapflux import run_site
+    from sapflux.errors import UserError
+
+    run = run_site(SITE, out=tmp_path)
+    with pytest.raises(UserError, match=r"no table 'dayly' in this run\. Did you mean 'daily'\?"):
+        run.table("dayly")
+
+
+def test_interrupts_end_a_batch_at_once(tmp_path):
+    import shutil
+    import signal
+    import time
+
+    twin = tmp_path / "twin"
+    shutil.copytree(SITE, twin)
+    command = [sys.executable, "-m", "sapflux", "run", SITE, str(twin), "--jobs", "2"]
+    process = subprocess.Popen(
+        [*command, "--out", str(tmp_path / "out")],
+        stderr=subprocess.PIPE,
+        stdout=subprocess.PIPE,
+        text=True,
+        cwd=ROOT,
+        start_new_session=True,
+    )
+    time.sleep(1.5)
+    for _ in range(2):
+        process.send_signal(signal.SIGINT)
+        time.sleep(0.02)
+    process.communicate(timeout=30)
+    assert process.returncode in (0, 130, -signal.SIGINT)

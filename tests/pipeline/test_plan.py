@@ -48,13 +48,15 @@ def test_missing_weather_names_the_methods_that_do_without():
     assert found == [
         f"{RECIPE}, [[heat_dissipation]] step 3: stage 'zero_flow_difference', method "
         "'quiet_nights', needs vapour_pressure_deficit, which neither the site nor an earlier "
-        "stage gives. The site would give it by channels of vapour_pressure_deficit, or of "
-        "air_temperature and relative_humidity. Methods that do without: nightly_maximum, "
-        "moving_window.",
+        "stage gives. The site would give it by channels of kind site: vapour_pressure_deficit, "
+        "or air_temperature and relative_humidity. Methods that do without: nightly_maximum, "
+        "moving_window; change it in a copy of the recipe (`sapflux stages --recipe NAME` prints "
+        "one).",
         f"{RECIPE}, [[heat_ratio]] step 5: stage 'zero_offset', method 'quiet_nights', needs "
         "vapour_pressure_deficit, which neither the site nor an earlier stage gives. The site "
-        "would give it by channels of vapour_pressure_deficit, or of air_temperature and "
-        "relative_humidity. Methods that do without: all_nights.",
+        "would give it by channels of kind site: vapour_pressure_deficit, or air_temperature and "
+        "relative_humidity. Methods that do without: all_nights; change it in a copy of the recipe "
+        "(`sapflux stages --recipe NAME` prints one).",
     ]
     with pytest.raises(RecipeError) as caught:
         check_plan(dry, load_recipe())

@@ -111,7 +111,8 @@ CASES = {
             (
                 "ridge/species.csv, row 4: the allometry of species 'oak' gives 1 of 1 stems "
                 "without probes more sapwood than they have wood. Sapwood area in cm2 is "
-                "sapwood_area_a_cm2 times the diameter over bark in cm to the power of sapwood_area_b."
+                "sapwood_area_a_cm2 times the diameter over bark in cm to the power of "
+                "sapwood_area_b."
             )
         ],
     ),
