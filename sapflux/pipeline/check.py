@@ -1,8 +1,10 @@
-"""What can be told of a site before its data are read: tables, recipe, headers."""
+"""What can be told of a site before its data are read: tables, recipe, the heads of its files."""
 
 from sapflux.errors import DataError, Fault, SiteError, nearest
 from sapflux.ingest import clock
-from sapflux.ingest.logs import match_files, read_header
+from sapflux.ingest.declared import head_faults
+from sapflux.ingest.files import match_files, stray_notes
+from sapflux.ingest.reasons import commonest
 from sapflux.pipeline.notes import notes_of
 from sapflux.pipeline.plan import methods_of, plan_faults
 from sapflux.pipeline.recipe import load_recipe
@@ -10,12 +12,14 @@ from sapflux.site.inventory import composition
 from sapflux.site.load import load_site
 
 M2_PER_HA = 1e4
+# Share of a file's data lines above which rejected lines are told. Source: own judgement.
+MOST_REJECTED = 0.2
 
 
 def check_site(path, recipe="stand_water_use"):
     """Counts and notes of a valid site; SiteError or RecipeError with every fault.
 
-    Reads the headers of the downloads only. A plan without logs is valid.
+    Reads no more than the heads of the downloads. A plan without logs is valid.
     """
     site = load_site(path)
     recipe = load_recipe(recipe)
@@ -53,40 +57,23 @@ def _stratum(stand, species, part):
 
 
 def header_faults(site):
-    """(faults, notes, number of files): whether the logs have the columns the channels name."""
-    faults, notes, count = [], [], 0
-    faults += phase_faults(site)
-    for name, log in site.logs.items():
-        layout = site.layouts[log.layout]
+    """(faults, notes, number of files): whether the heads of the files read as they are declared.
+
+    Faults: column names that cannot be found, columns that no file has, logs of which no sampled
+    record can be read, and steps between records that are not the log's interval.
+    """
+    faults, notes, count = list(phase_faults(site)), [], 0
+    for name in site.logs:
         try:
             paths = match_files(site, name)
         except DataError as error:
             faults += error.faults
             continue
         count += len(paths)
-        headers = {}
-        for path in paths:
-            try:
-                headers[path] = list(read_header(path, layout))
-            except DataError as error:
-                notes += [str(fault) for fault in error.faults]
-        known = {column for header in headers.values() for column in header}
-        if not headers:
-            continue
-        wanted = list(layout.time_columns)
-        if layout.long:
-            wanted += [*layout.long.name_columns, layout.long.value_column]
-        for column in wanted:
-            if column not in known:
-                faults.append(
-                    Fault(
-                        f"{site.folder}/site.toml, [layouts.{log.layout}]",
-                        f"no file of log {name!r} has the column {column!r}",
-                        nearest(column, known),
-                    )
-                )
-        if not layout.long:
-            faults += _channel_faults(site, name, known)
+        notes += stray_notes(site, name)
+        told, more = head_faults(site, name, paths)
+        faults += told
+        notes += more
     return faults, notes, count
 
 
@@ -119,11 +106,61 @@ def unheard_channels(site, logs):
     return notes
 
 
-def _channel_faults(site, log, known):
-    for row, line in zip(site.table("channels"), site.rows_at["channels"], strict=True):
-        if row.log == log and row.column not in known:
-            yield Fault(
-                f"{site.folder}/channels.csv, row {line}",
-                f"no file of log {log!r} has a column {row.column!r}",
-                nearest(row.column, known),
+def silent_logs(site, logs):
+    """A fault for each log of which no record was read: the commonest reason and its first line.
+
+    logs : name -> log series, as for the notes below.
+    """
+    faults = []
+    for name, series in logs.items():
+        if len(series.end):
+            continue
+        layout = site.logs[name].layout
+        lines = sum(_data_lines(record) for record in series.files)
+        outside = sum(record.outside for record in series.files)
+        where = f"{site.folder}/site.toml, [logs.{name}]"
+        worst = commonest(series.rejected, name, layout)
+        what, right = "its files hold no line of data", "Put its downloads there."
+        if worst and worst.count > outside:
+            where = f"{site.folder}/{worst.file}, line {worst.line}"
+            what = f"{worst.count} of {lines} data lines are rejected because {worst.reason}"
+            right = worst.remedy
+        elif outside:
+            what = f"{outside} of {lines} data lines lie outside from and to of all its channels"
+            right = "Correct from and to in channels.csv, or 'clock' and 'time_format' of the log."
+        faults.append(Fault(where, f"log {name!r} gives no record: {what}", right))
+    return faults
+
+
+def displaced_notes(site, logs):
+    """Notes on logs with records that came to nothing because another is nearer to their step."""
+    return [
+        f"{series.lost} record{'s' if series.lost > 1 else ''} of log {name!r} fell on a step that "
+        f"another record is nearer to: see rejected.csv; is interval_min "
+        f"({site.logs[name].interval_min:g}) right?"
+        for name, series in logs.items()
+        if series.lost
+    ]
+
+
+def rejection_notes(site, logs):
+    """Notes on files of which more than MOST_REJECTED of the data lines are rejected."""
+    notes = []
+    for name, series in logs.items():
+        for record in series.files:
+            lines = _data_lines(record)
+            if record.rejected <= MOST_REJECTED * lines:
+                continue
+            here = [line for line in series.rejected if line[0] == record.path]
+            worst = commonest(here, name, site.logs[name].layout)
+            notes.append(
+                f"{site.folder}/{record.path}: {100 * record.rejected / lines:.0f} % of its "
+                f"{lines} data lines are rejected, most often (first in line {worst.line}) "
+                f"because {worst.reason}. {worst.remedy}"
             )
+    return notes
+
+
+def _data_lines(record):
+    """Lines of a file that are neither header nor blank."""
+    return record.lines - record.header - record.blank

@@ -38,13 +38,16 @@ class Computed:
     seconds: dict = field(default_factory=dict)
 
 
-def compute(site, recipe, *, native=False, block_days=BLOCK_DAYS):
+def compute(site, recipe, *, native=False, block_days=BLOCK_DAYS, logs=None, known=None):
     """Run the recipe on the site. The recipe must have been checked against the site.
 
+    logs : log series by name, of a run before; None: read them. known : (chain, cube) -> what is
+    to replace the products of its stages, see `Chain`; None: nothing.
     DataError where the site has no logs, or its files lack what the channels name.
     """
     stopwatch = _Stopwatch()
-    logs, notes = _read_logs(site)
+    logs, notes = (logs, []) if logs is not None else _read_logs(site)
+    known = known or (lambda chain, cube: {})
     stopwatch.lap("read")
     found = Computed(logs, notes=notes + notes_of(site, recipe))
     cubes = measured_cubes(site, logs)
@@ -68,6 +71,7 @@ def compute(site, recipe, *, native=False, block_days=BLOCK_DAYS):
             recipe.chains[method],
             probe_chain_beside(site, cube, weather),
             offset=site.offset,
+            known=known(method, cube),
         )
         answered = answered_records(site, logs, cube)
         _run_method(chain, joined, found, counts, answered, native, block_days)
@@ -75,7 +79,8 @@ def compute(site, recipe, *, native=False, block_days=BLOCK_DAYS):
     stopwatch.lap("correct")
     found.probes = labelled(site, joined.dataset())
     found.history.append(f"join: {dict(recipe.join)!r} to {step_s} s")
-    scaled = scale(site, recipe, found.probes, weather, block_days)
+    replaced = known("scaling", found.probes)
+    scaled = scale(site, recipe, found.probes, weather, block_days, replaced)
     found.probes, found.trees, found.stand = scaled.probes, scaled.trees, scaled.stand
     found.evidence |= scaled.tables
     found.history += [step.line() for step in recipe.chains["scaling"]]

@@ -27,6 +27,8 @@ class Chain:
     beside : (block's ends [UTC, datetime64[s]], names wanted) -> name -> DataArray: facts,
         weather and sun on those records.
     spread_flags : whether a flag of fewer dims is spread over all points (method chains).
+    known : stage -> name -> array on the cube's records that replaces what the stage made, where
+        it made a value: how a chain is run again from any stage on, on perturbed or true values.
     """
 
     cube: xr.Dataset
@@ -34,6 +36,7 @@ class Chain:
     beside: object
     spread_flags: bool = True
     offset: np.timedelta64 = NO_OFFSET  # fixed standard time minus UTC
+    known: dict = field(default_factory=dict)
 
     @property
     def interval_s(self):
@@ -121,6 +124,10 @@ def _run(chain, steps, block, tables, also=()):
         _add_flags(working, part["quality"])
     for step in steps:
         _apply(step, working, chain.spread_flags)
+        for name, values in chain.known.get(step.stage.name, {}).items():
+            made = working.variables[name]
+            here = np.where(np.isnan(made.values), np.nan, values[..., block.whole])
+            working.variables[name] = made.copy(data=here)
     return working
 
 

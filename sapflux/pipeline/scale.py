@@ -33,10 +33,11 @@ def ground_of(site, ends):
     return facts.stand_facts(site, ends[:1])["sapwood_per_ground"].values
 
 
-def scale(site, recipe, probes, weather, block_days):
+def scale(site, recipe, probes, weather, block_days, known=None):
     """Run the scaling chain on the joined cube of all probes.
 
-    probes : Dataset (probe, point, time) of flux_density, quality and origin, labelled.
+    probes : Dataset (probe, point, time) of flux_density, quality and origin, labelled;
+    known : what is to replace the products of stages, see `Chain`.
     """
     steps = recipe.chains["scaling"]
     # A flag of the common step may stand beside a value of it, so it masks nothing here.
@@ -46,6 +47,7 @@ def scale(site, recipe, probes, weather, block_days):
         scaling_beside(site, probes, weather),
         spread_flags=False,
         offset=site.offset,
+        known=known or {},
     )
     tables = fitted_tables(chain, block_days)
     parts = {}

@@ -40,7 +40,7 @@ def publish(out, site_key, identity, write, keep_all=False):
     """
     places = _Places(Path(out), site_key)
     with _told(places.place):
-        places.out.mkdir(parents=True, exist_ok=True)
+        _make(places.out)
         with held(places.lock):
             _recover(places)
             _check_replaceable(places.place)
@@ -60,6 +60,16 @@ def publish(out, site_key, identity, write, keep_all=False):
             with suppress(OSError):
                 _file_former(places, keep_all)
     return places.place
+
+
+def _make(out):
+    """The folder of results. UserError where something else is in its way."""
+    try:
+        out.mkdir(parents=True, exist_ok=True)
+    except (FileExistsError, FileNotFoundError) as error:
+        fault = Fault(str(out), f"the folder of results cannot be made ({error.strerror})",
+                      "It, or a part of its path, is a file: choose another --out.")  # fmt: skip
+        raise UserError(fault) from None
 
 
 def recover(out, site_key):
@@ -188,8 +198,6 @@ TROUBLES = {
     errno.EFBIG: ("a file grew larger than it may", "Raise the limit or choose another --out"),
     errno.EROFS: ("the file system may only be read", "Choose another --out"),
     errno.ENOTDIR: ("a part of the path is a file", "Choose another --out"),
-    errno.EEXIST: ("--out, or a part of its path, is a file", "Choose another --out"),
-    errno.ENOENT: ("the folder cannot be made", "Choose another --out"),
     errno.EIO: ("the disk cannot be written", "Choose another --out"),
 }
 HELD = (
