@@ -3,6 +3,7 @@
 import re
 
 from sapflux.constants import ZERO_CELSIUS
+from sapflux.schema import QUANTITIES
 
 # Factors to SI. Exact by definition (SI brochure, 9th edition, 2019).
 MM = 1e-3  # in m
@@ -39,6 +40,7 @@ UNITS = {
     "mm": ("m", MM, 0.0),
     "um": ("m", 1e-6, 0.0),
     "m s-1": ("m s-1", 1.0, 0.0),
+    "km h-1": ("m s-1", 1000.0 / 3600.0, 0.0),
     "cm h-1": ("m s-1", CM / 3600.0, 0.0),
     "mm h-1": ("m s-1", MM / 3600.0, 0.0),
     "cm s-1": ("m s-1", CM, 0.0),
@@ -48,6 +50,23 @@ UNITS = {
     "kg m-2": ("kg m-2", 1.0, 0.0),
     "mm water": ("kg m-2", 1.0, 0.0),
 }
+# Units that a column of a quantity may be written in, where these are not all units of its SI unit.
+WATER_DEPTH = ("mm", "mm water", "kg m-2")
+PRESSURES_OF_AIR = ("Pa", "hPa", "kPa")
+WRITTEN = {
+    "heat_ratio": ("1",),
+    "log_heat_ratio": ("1",),
+    "logged_velocity": ("cm h-1", "mm h-1", "cm s-1", "m s-1"),
+    "heater_state": ("1", "%"),
+    "relative_humidity": ("%", "1"),
+    "soil_moisture": ("m3 m-3", "%", "1"),
+    "vapour_pressure_deficit": PRESSURES_OF_AIR,
+    "air_pressure": PRESSURES_OF_AIR,
+    "wind_speed": ("m s-1", "km h-1"),
+    "precipitation": WATER_DEPTH,
+    "throughfall": WATER_DEPTH,
+    "stage": ("m", "cm", "mm"),
+}
 
 # Factors to SI of config keys, by the unit that `unit_of_key` finds; units of SI are left out.
 KEY_FACTORS = {"mm": MM, "cm": CM, "cm2_s": CM2_PER_S, "g_m2_s": G}
@@ -56,15 +75,32 @@ KEY_FACTORS = {"mm": MM, "cm": CM, "cm2_s": CM2_PER_S, "g_m2_s": G}
 DIFFERENCE_FACTORS = {"K": 1.0, "degC": 1.0, "degF": 5.0 / 9.0}
 
 
-def accepted(si_unit):
-    """The units a column may be written in when the quantity is `si_unit` inside."""
-    return [unit for unit, (si, _, _) in UNITS.items() if si == si_unit]
+def accepted(quantity):
+    """The units a logger column of a quantity may be written in. KeyError for no quantity.
+
+    >>> accepted("wind_speed"), accepted("heated_emf")
+    (('m s-1', 'km h-1'), ('V', 'mV', 'uV'))
+    """
+    inside = QUANTITIES[quantity].units
+    return WRITTEN.get(quantity) or tuple(u for u, (si, _, _) in UNITS.items() if si == inside)
+
+
+def meant(unit, quantity):
+    """The unit of the table that a column's unit means: 'mm' of precipitation is a depth of water.
+
+    Source: 1 mm of water on 1 m2 is 1 kg, at 1000 kg m-3 (WMO-No. 8, from memory).
+
+    >>> meant("mm", "precipitation"), meant("mm", "stage")
+    ('mm water', 'mm')
+    """
+    return "mm water" if unit == "mm" and WRITTEN.get(quantity) is WATER_DEPTH else unit
 
 
 def to_si(values, unit, *, difference=False):
     """Values as written, in SI. KeyError for a unit that is not in the table.
 
-    `difference` marks a temperature difference, which takes no offset.
+    `difference` marks a temperature difference, which takes no offset. A unit that depends on the
+    quantity goes through `meant` first.
 
     >>> to_si(3.6, "cm h-1")
     1e-05

@@ -24,6 +24,7 @@ LAYERS = {
     "quality": 2, "stage": 2, "site": 2,
     "ingest": 3, "correction": 3, "scaling": 3, "virtual": 3,
     "pipeline": 4,
+    "study": 5,
     "cli": 7,
 }  # fmt: skip
 CLOSED = {3}

@@ -53,8 +53,27 @@ def test_a_temperature_difference_takes_no_offset():
 
 def test_every_quantity_can_be_written_in_some_unit_and_has_a_range():
     for name, row in schema.QUANTITIES.items():
-        assert units.accepted(row.units), name
+        assert units.accepted(name), name
         assert row.low < row.high, name
+
+
+def test_units_accepted_for_a_quantity_are_units_of_its_kind():
+    for name, row in schema.QUANTITIES.items():
+        for unit in units.accepted(name):
+            si, _, _ = units.UNITS[units.meant(unit, name)]
+            assert si == row.units, (name, unit)
+
+
+def test_wind_by_hand():
+    # 36 km in an hour are 10 m in a second
+    assert units.to_si(36.0, "km h-1") == pytest.approx(10.0, rel=1e-15)
+
+
+def test_units_that_only_mislead_are_not_offered():
+    assert set(units.accepted("wind_speed")) == {"m s-1", "km h-1"}
+    assert "m3 m-3" not in units.accepted("relative_humidity")
+    assert "m3 m-3" in units.accepted("soil_moisture")
+    assert "mm" in units.accepted("precipitation") and "mm" in units.accepted("throughfall")
 
 
 def test_names_of_flags_and_variables_are_words():

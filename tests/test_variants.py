@@ -195,12 +195,12 @@ def test_a_mistyped_name_in_a_long_table_is_told(site, tmp_path):
 
 
 def test_hourly_logs_that_miss_the_half_hour_of_the_site_are_told_before_a_run(site):
-    edit(site, "site.toml", lambda text: text.replace("utc_offset_h = 1.0", "utc_offset_h = 5.75"))
+    edit(site, "site.toml", lambda text: text.replace("utc_offset_h = 1.0", "utc_offset_h = 1.75"))
     with pytest.raises(SiteError) as caught:
         check_site(site)
     assert (
         f"{site}/site.toml, [logs.upper]: its whole intervals end 5 min after those of the site's "
-        "standard time (utc_offset_h 5.75). Let utc_offset_h and the log's clock differ by whole "
+        "standard time (utc_offset_h 1.75). Let utc_offset_h and the log's clock differ by whole "
         "intervals."
     ) in [str(fault) for fault in caught.value.faults]
 
@@ -222,10 +222,16 @@ def test_channels_that_leave_no_record_of_a_probe_are_told(site, tmp_path):
     (site / "channels.csv").write_text("\n".join([head + ",from", *late]) + "\n")
     with pytest.raises(DataError) as caught:
         run_site(site, out=tmp_path / "out")
-    assert str(caught.value) == (
+    first, *of_logs = map(str, caught.value.faults)
+    assert first == (
         f"{site}: the downloads hold no record of a probe. Run `sapflux check {site}`; see from "
         "and to in channels.csv."
     )
+    assert (
+        f"{site}/site.toml, [logs.upper]: log 'upper' gives no record: 12690 of 12692 data lines "
+        "lie outside from and to of all its channels. Correct from and to in channels.csv, or "
+        "'clock' and 'time_format' of the log."
+    ) in of_logs
 
 
 def test_a_column_in_the_wrong_unit_empties_the_totals_and_the_reason_is_told(site, tmp_path):

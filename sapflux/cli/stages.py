@@ -11,6 +11,7 @@ from sapflux.cli import DONE, USAGE
 from sapflux.cli.text import columns, print_json
 from sapflux.errors import nearest
 from sapflux.pipeline.recipe import PARTS, find_recipe, known_settings
+from sapflux.site.quantities import table_lines
 from sapflux.stage import ORDER, REGISTRY
 
 _ = (sapflux.correction, sapflux.scaling)  # imported for the stages they register
@@ -18,6 +19,9 @@ _ = (sapflux.correction, sapflux.scaling)  # imported for the stages they regist
 
 def stages(options):
     """List all stages, or explain one in full; exit code 2 for an unknown name."""
+    if options.quantities:
+        print("\n".join(table_lines()))
+        return DONE
     if options.recipe:
         print(find_recipe(options.recipe).read_text(encoding="utf-8"), end="")
         return DONE

@@ -45,7 +45,8 @@ class LogSeries:
     file, line : (n) int32, index into `files` and line from 1; (n, columns) in the order of
     `values` where the cells of one stamp come from several lines, -1 and 0 where no line has one.
     rejected : (file, line, reason, text); displaced : the same of lines counted as duplicate
-    because another record is nearer to their step.
+    because another record is nearer to their step. lost : number of records among these, repeats
+    and re-stamped copies apart.
     conflicts : (stamp, log, column, value, file, line, other_value, other_file, other_line), values
     as text, the first being the owner's.
     """
@@ -61,6 +62,7 @@ class LogSeries:
     rejected: tuple
     displaced: tuple
     conflicts: tuple
+    lost: int = 0
 
 
 def log_series(log_name, files, ranked, columns, interval, merged, outside):
@@ -102,6 +104,7 @@ def log_series(log_name, files, ranked, columns, interval, merged, outside):
         rejected=tuple(rejected),
         displaced=tuple(sorted(displaced)),
         conflicts=tuple(sorted(conflicts)),
+        lost=merged.lost,
     )
 
 

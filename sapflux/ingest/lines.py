@@ -88,7 +88,7 @@ def cut(data, layout, has_stamp):
     array = np.frombuffer(data, dtype=np.uint8)
     kind = np.full(len(start), REGULAR, dtype=np.uint8)
     reasons = {}
-    names = _find_names(data, start, stop, layout)
+    names = find_names(data, start, stop, layout)
     names_of = np.searchsorted([n.line for n in names], np.arange(len(start)), "right") - 1
     separators = np.flatnonzero(array == ord(layout.separator))
     first = np.searchsorted(separators, start)
@@ -134,8 +134,8 @@ def _lines_with(data, start, positions):
     return np.unique(np.searchsorted(start, positions, "right") - 1).tolist()
 
 
-def _find_names(data, start, stop, layout):
-    """Every names line of the file."""
+def find_names(data, start, stop, layout):
+    """Every names line of a text, as a tuple of `Names`."""
     word = max(required_names(layout), key=len).encode()
     found, position = [], data.find(word)
     while position >= 0:

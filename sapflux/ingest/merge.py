@@ -35,7 +35,8 @@ class Merged:
     source, line : (n), or (columns, n) where the cells of one stamp come from several lines; -1 and
     0 for a cell that no line has. Lines count from 1.
     displaced : (source, line, source of the line that is kept, that line) for each line whose step
-    another stamp is nearer to.
+    another stamp is nearer to. lost : number of records among them, repeats and copies of the
+    record that is kept in another file apart.
     conflicts : (end, column, (source, line, text), (source, line, text)).
     """
 
@@ -46,6 +47,7 @@ class Merged:
     line: np.ndarray
     classes: list
     displaced: list
+    lost: int
     conflicts: list
 
 
@@ -138,6 +140,7 @@ def merge(sources, columns, interval, anchor, layout):
         line,
         [classes[rows.source == number] for number in range(len(sources))],
         _displaced(rows),
+        _lost(rows, sources),
         conflicts,
     )
 
@@ -273,3 +276,31 @@ def _displaced(rows):
         for row in rows.of(group):
             out.append(tuple(int(n) for r in (row, winner) for n in (rows.source[r], rows.line[r])))
     return sorted(out)
+
+
+def _lost(rows, sources):
+    """Number of records whose step another is nearer to, and that tell something else than it.
+
+    A download that was written again with other stamps tells the same: its values are those of
+    the record that is kept.
+    """
+    leaders, count = rows.leaders, 0
+    for group in np.flatnonzero(rows.place < 0).tolist():
+        one, kept = leaders[group], leaders[rows.nearest[group]]
+        if rows.source[one] == rows.source[kept]:
+            count += 1
+            continue
+        cells, others = _cells(rows, sources, one), _cells(rows, sources, kept)
+        count += any(name not in others or _apart(n, others[name]) for name, n in cells.items())
+    return count
+
+
+def _cells(rows, sources, row):
+    """Name -> value of one row; a long table's one value has the name 0."""
+    parsed = sources[rows.source[row]].parsed
+    names = parsed.columns if parsed.cell is None else (0,)
+    return dict(zip(names, parsed.values[rows.at[row]].tolist(), strict=True))
+
+
+def _apart(one, other):
+    return one != other and not (np.isnan(one) and np.isnan(other))

@@ -1,9 +1,11 @@
 """Many sites: each on its own, one failing site stops no other."""
 
 import signal
+import threading
 import time
 import traceback
 from concurrent.futures import ProcessPoolExecutor, as_completed
+from contextlib import contextmanager
 from dataclasses import dataclass, field
 from pathlib import Path
 
@@ -75,9 +77,10 @@ def _in_processes(paths, workers, options):
             yield _outcome(future, waiting[future])
     except BaseException:
         # Interrupted: whoever still works is stopped. A run is published whole or not at all.
-        for worker in list((pool._processes or {}).values()):
-            worker.terminate()
-        pool.shutdown(wait=False, cancel_futures=True)
+        with _undisturbed():
+            for worker in list((pool._processes or {}).values()):
+                worker.terminate()
+            pool.shutdown(wait=False, cancel_futures=True)
         raise
     pool.shutdown()
 
@@ -101,6 +104,19 @@ def _on_cluster(paths, address, options):
         waiting = {client.submit(run_one, path, pure=False, **options): path for path in paths}
         for future in finished(waiting):
             yield _outcome(future, waiting[future])
+
+
+@contextmanager
+def _undisturbed():
+    """Without interrupts, where this is the thread that takes them."""
+    if threading.current_thread() is not threading.main_thread():
+        yield
+        return
+    former = signal.signal(signal.SIGINT, signal.SIG_IGN)
+    try:
+        yield
+    finally:
+        signal.signal(signal.SIGINT, former)
 
 
 def _outcome(future, path):

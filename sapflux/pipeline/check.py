@@ -2,7 +2,7 @@
 
 from sapflux.errors import DataError, Fault, SiteError, nearest
 from sapflux.ingest import clock
-from sapflux.ingest.declared import head_faults
+from sapflux.ingest.declared import MOST_REJECTED, head_faults
 from sapflux.ingest.files import match_files, stray_notes
 from sapflux.ingest.reasons import commonest
 from sapflux.pipeline.notes import notes_of
@@ -12,8 +12,6 @@ from sapflux.site.inventory import composition
 from sapflux.site.load import load_site
 
 M2_PER_HA = 1e4
-# Share of a file's data lines above which rejected lines are told. Source: own judgement.
-MOST_REJECTED = 0.2
 
 
 def check_site(path, recipe="stand_water_use"):
@@ -23,7 +21,7 @@ def check_site(path, recipe="stand_water_use"):
     """
     site = load_site(path)
     recipe = load_recipe(recipe)
-    faults, notes, files = header_faults(site)
+    faults, notes, files = header_faults(site, sampled=True)
     faults += plan_faults(site, recipe)
     if faults:
         raise SiteError(faults)
@@ -56,11 +54,12 @@ def _stratum(stand, species, part):
     }
 
 
-def header_faults(site):
+def header_faults(site, sampled=False):
     """(faults, notes, number of files): whether the heads of the files read as they are declared.
 
     Faults: column names that cannot be found, columns that no file has, logs of which no sampled
-    record can be read, and steps between records that are not the log's interval.
+    record can be read, and steps between records that are not the log's interval. If `sampled`,
+    the notes name files of which many of the first records would be rejected.
     """
     faults, notes, count = list(phase_faults(site)), [], 0
     for name in site.logs:
@@ -71,7 +70,7 @@ def header_faults(site):
             continue
         count += len(paths)
         notes += stray_notes(site, name)
-        told, more = head_faults(site, name, paths)
+        told, more = head_faults(site, name, paths, sampled)
         faults += told
         notes += more
     return faults, notes, count
@@ -123,7 +122,7 @@ def silent_logs(site, logs):
         what, right = "its files hold no line of data", "Put its downloads there."
         if worst and worst.count > outside:
             where = f"{site.folder}/{worst.file}, line {worst.line}"
-            what = f"{worst.count} of {lines} data lines are rejected because {worst.reason}"
+            what = f"{worst.count} of {lines} data lines are rejected: {worst.reason}"
             right = worst.remedy
         elif outside:
             what = f"{outside} of {lines} data lines lie outside from and to of all its channels"
@@ -155,8 +154,8 @@ def rejection_notes(site, logs):
             worst = commonest(here, name, site.logs[name].layout)
             notes.append(
                 f"{site.folder}/{record.path}: {100 * record.rejected / lines:.0f} % of its "
-                f"{lines} data lines are rejected, most often (first in line {worst.line}) "
-                f"because {worst.reason}. {worst.remedy}"
+                f"{lines} data lines are rejected, most often (first in line {worst.line}): "
+                f"{worst.reason.rstrip('.')}. {worst.remedy}"
             )
     return notes
 

@@ -12,7 +12,13 @@ from sapflux.ingest.cube import answered_records, measured_cubes
 from sapflux.ingest.logs import read_log
 from sapflux.ingest.weather import weather_series
 from sapflux.pipeline.beside import probe_chain_beside
-from sapflux.pipeline.check import header_faults, unheard_channels
+from sapflux.pipeline.check import (
+    displaced_notes,
+    header_faults,
+    rejection_notes,
+    silent_logs,
+    unheard_channels,
+)
 from sapflux.pipeline.execute import BLOCK_DAYS, Chain, fitted_tables, run_blocks
 from sapflux.pipeline.installation_lives import FlagCounts, installation_table
 from sapflux.pipeline.join import Joined, common_grid
@@ -56,13 +62,12 @@ def compute(site, recipe, *, native=False, block_days=BLOCK_DAYS, logs=None, kno
     step_s = site.position.common_step_min * 60
     ends = common_grid(cubes.values(), step_s, site.offset)
     if not len(ends):
-        raise DataError(
-            Fault(
-                str(site.folder),
-                "the downloads hold no record of a probe",
-                f"Run `sapflux check {site.folder}`; see from and to in channels.csv.",
-            )
+        nothing = Fault(
+            str(site.folder),
+            "the downloads hold no record of a probe",
+            f"Run `sapflux check {site.folder}`; see from and to in channels.csv.",
         )
+        raise DataError([nothing, *silent_logs(site, logs)])
     joined = Joined(list(cubes.values()), ends, step_s, recipe.join["least_coverage"])
     counts = FlagCounts()
     for (method, interval_s), cube in cubes.items():
@@ -109,7 +114,9 @@ def _read_logs(site):
     if faults:
         raise DataError(faults)
     logs = {name: read_log(site, name) for name in site.logs}
-    return logs, notes + unheard_channels(site, logs)
+    notes += [str(fault) for fault in silent_logs(site, logs)]
+    notes += [*unheard_channels(site, logs), *displaced_notes(site, logs)]
+    return logs, notes + rejection_notes(site, logs)
 
 
 def _run_method(chain, joined, found, counts, answered, native, block_days):

@@ -51,7 +51,7 @@ def _quantity_faults(where, row):
             f"{row.quantity} is no quantity of a {row.kind}",
             f"It belongs to a {' or a '.join(quantity.columns)}.",
         )
-    units = accepted(quantity.units)
+    units = accepted(row.quantity)
     if row.unit not in units:
         yield Fault(
             where, f"unit {row.unit!r} does not fit {row.quantity}", nearest(row.unit, units)

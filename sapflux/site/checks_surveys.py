@@ -29,12 +29,9 @@ def stem_faults(reading):
             f"same date {row.date}",
             "Keep one of them, or name the stems apart.",
         )
-    told = set()
     for where, row in rows:
-        for what, table, name in (("plot", "plots", row.plot), ("species", "species", row.species)):
-            if (what, name) not in told:  # once, not for every stem
-                told.add((what, name))
-                yield from reading.unknown(where, what, table, what, name)
+        yield from reading.unknown(where, "plot", "plots", "plot", row.plot)
+        yield from reading.unknown(where, "species", "species", "species", row.species)
 
 
 def nesting_faults(reading):

@@ -46,6 +46,20 @@ def survey_faults(reading):
             )
 
 
+def diameter_faults(reading):
+    """Trees whose diameter stands in the survey and in `trees.csv`."""
+    for where, row in reading.rows("trees"):
+        survey = latest_survey(reading.site, row.tree)
+        if row.diameter_cm is not None and survey is not None and survey is not row:
+            yield Fault(
+                where,
+                f"tree {row.tree!r} has diameter_cm {row.diameter_cm:g} here and "
+                f"{survey.diameter_cm:g} in surveys.csv",
+                "Leave it blank here, where it is for trees outside all plots; a decimal comma in "
+                "the row may have shifted its cells.",
+            )
+
+
 def core_faults(reading):
     """Cores that stand twice, belong to no stem, or hold more sapwood than the stem has wood."""
     rows = list(reading.rows("cores"))
@@ -71,4 +85,4 @@ def core_faults(reading):
             )
 
 
-CHECKS = (row_faults, survey_faults, core_faults)
+CHECKS = (row_faults, survey_faults, diameter_faults, core_faults)

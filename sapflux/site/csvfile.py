@@ -9,6 +9,8 @@ from sapflux.errors import Fault, nearest
 from sapflux.site.messages import plain
 from sapflux.site.tables import columns_of
 
+DELIMITERS = {",": "','", ";": "';'", "\t": "a tab"}  # as messages name them
+
 
 @dataclass(frozen=True)
 class Table:
@@ -57,6 +59,11 @@ def read_table(path, row_class):
             lost = True
             continue
         if not any(found):
+            continue
+        other = _other_delimiter(path, line, text, found, names, delimiter)
+        if other:
+            faults.append(_delimiter_fault(where, delimiter, other))
+            lost = True
             continue
         given = {n: cell for n, cell in zip(names, found, strict=False) if cell and n in cells}
         for name, column in cells.items():
@@ -117,7 +124,7 @@ def _written_lines(text):
 
 def _delimiter(header):
     """The delimiter that a header line uses most; ',' where it uses none."""
-    return max((",", ";", "\t"), key=header.count)
+    return max(DELIMITERS, key=header.count)
 
 
 def _split(path, line, text, delimiter):
@@ -155,6 +162,24 @@ def _required(row_class):
     return [c for c, field in columns_of(row_class).items() if field.is_required()]
 
 
+def _other_delimiter(path, line, text, cells, names, delimiter):
+    """The delimiter by which a row has the header's number of cells, where its own does not."""
+    if len(cells) >= len(names):
+        return None
+    for other in DELIMITERS:
+        if other != delimiter and len(_split(path, line, text, other)[0]) == len(names):
+            return other
+    return None
+
+
+def _delimiter_fault(where, header, row):
+    return Fault(
+        where,
+        f"the header is delimited by {DELIMITERS[header]} and the row by {DELIMITERS[row]}",
+        "Save the table with one delimiter throughout.",
+    )
+
+
 def _shape_fault(where, cells, names):
     """A row whose cells do not lie under the header's names."""
     beyond = [c for i, c in enumerate(cells) if c and (i >= len(names) or not names[i])]
@@ -179,8 +204,12 @@ def _validated(where, given, row_class, missing):
         return row_class.model_validate(given), ()
     except ValidationError as error:
         entries = error.errors(include_url=False)
-    return None, [
-        Fault(where, *plain(entry, columns_of(row_class), cells=True))
-        for entry in entries
-        if not (entry["type"] == "missing" and entry["loc"][0] in missing)
-    ]
+    faults = []
+    for entry in entries:
+        blank = entry["type"] == "missing"
+        if blank and entry["loc"][0] in missing:
+            continue
+        what, remedy = plain(entry, columns_of(row_class), cells=True)
+        known = row_class.blank_remedy(entry["loc"][0], given) if blank else ""
+        faults.append(Fault(where, what, known or remedy))
+    return None, faults

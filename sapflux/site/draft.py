@@ -16,7 +16,8 @@ from sapflux.site.tables import TABLES, columns_of
 DRAFT_HEAD = """\
 # Drafted from the headers and first records of logger files. Lines marked QUESTION could not be
 # known from them: answer each, and take the '#' away. `sapflux init` into another folder shows
-# every key explained.
+# every key explained. A message of 'row 4' of a table means line 4 of its file, comments and the
+# line of column names counted.
 
 [site]
 # QUESTION: where is the site, and how does it count time?
@@ -30,6 +31,14 @@ common_step_min = 60        # a multiple of the intervals of the logs of sap-flo
 """
 
 
+# Dates (with a time of day) in names of files, as year-month-day, year-month or day-month-year.
+DATE = re.compile(
+    r"(?<!\d)(?:"
+    r"(?:19|20)\d\d[-_. ]?(?:0[1-9]|1[0-2])(?:[-_. ]?(?:0[1-9]|[12]\d|3[01])"
+    r"(?:[-_. T]?\d\d[-_.h]?\d\d(?:[-_.m]?\d\d)?)?)?"
+    r"|(?:0[1-9]|[12]\d|3[01])[-_. ](?:0[1-9]|1[0-2])[-_. ](?:19|20)?\d\d"
+    r")(?!\d)"
+)
 ONE_LOGGER = """\
 # QUESTION: are all these downloads of one logger? They have the same columns; if not, give each
 # logger a section of its own, here and in channels.csv.
@@ -56,8 +65,9 @@ def draft_from_files(folder, files):
     or with every file that could not be made out; nothing is written then.
     """
     folder = _empty_folder(folder)
-    found, faults = [], []
-    for path in map(Path, files):
+    paths = {path.resolve(): path for path in map(Path, files)}.values()  # each once
+    found, faults = [], list(_same_names(paths))
+    for path in paths:
         try:
             found.append((path, sniff(path)))
         except SiteError as error:
@@ -72,22 +82,53 @@ def draft_from_files(folder, files):
     return _write(folder, texts)
 
 
+def _same_names(paths):
+    """Faults of files of one name: they could not lie in one folder."""
+    first = {}
+    for path in paths:
+        other = first.setdefault(path.name, path)
+        if other is not path:
+            yield Fault(
+                str(path),
+                f"{other} has the same name",
+                "All downloads go into one folder, raw/: give each a name of its own.",
+            )
+
+
 def _empty_folder(folder):
     folder = Path(folder)
-    if folder.exists() and (not folder.is_dir() or any(folder.iterdir())):
-        what = (
-            "the folder holds files already" if folder.is_dir() else "there is a file of that name"
-        )
+    what = ""
+    try:
+        if folder.exists() and not folder.is_dir():
+            what = "there is a file of that name"
+        elif folder.exists() and any(folder.iterdir()):
+            what = "the folder holds files already"
+    except OSError as error:
+        raise SiteError(_not_written(folder, error)) from None
+    if what:
         raise SiteError(Fault(str(folder), what, "Name a folder that is new or empty."))
     return folder
 
 
 def _write(folder, texts):
-    folder.mkdir(parents=True, exist_ok=True)
-    (folder / "raw").mkdir()
-    for name, text in texts.items():
-        (folder / name).write_text(text, encoding="utf-8", newline="\n")
+    path = folder
+    try:
+        folder.mkdir(parents=True, exist_ok=True)
+        (folder / "raw").mkdir()
+        for name, text in texts.items():
+            path = folder / name
+            path.write_text(text, encoding="utf-8", newline="\n")
+    except OSError as error:
+        raise SiteError(_not_written(path, error)) from None
     return [folder / name for name in texts]
+
+
+def _not_written(path, error):
+    return Fault(
+        str(path),
+        f"it cannot be written ({error.strerror})",
+        "Name a folder where you may write.",
+    )
 
 
 def _table_text(table, comments, rows):
@@ -107,10 +148,14 @@ def _csv_line(cells):
 
 
 def _grouped(found):
-    """log name -> (layout name, paths, findings of the first): files laid out alike are one log."""
+    """log name -> (layout name, paths, findings of the first): files laid out alike are one log.
+
+    The order of columns does not matter: they are found by name.
+    """
     groups = {}
     for path, finding in found:
-        groups.setdefault((finding.layout_key, finding.names), []).append((path, finding))
+        names = frozenset(filter(None, finding.names))
+        groups.setdefault((finding.layout_key, names), []).append((path, finding))
     layouts, logs = {}, {}
     for (layout, _), members in groups.items():
         layout_name = layouts.setdefault(layout, f"layout{len(layouts) + 1}")
@@ -121,8 +166,8 @@ def _grouped(found):
 
 
 def _log_name(paths, taken):
-    """A name for a log from what the names of its files begin with."""
-    stem = _beginning([path.stem for path in paths])
+    """A name for a log from what the names of its files begin with, dates left out."""
+    stem = _beginning([DATE.sub("", path.stem) for path in paths])
     stem = "".join(c if c.isascii() and (c.isalnum() or c in "_-") else "_" for c in stem)
     stem = stem.strip("_-") or "log"
     name, number = stem, 2
@@ -137,7 +182,7 @@ def _beginning(words):
     >>> _beginning(["T1_20260501", "T1_20260620"])
     'T1'
     """
-    parts = [re.split(r"[_\-. ]", word) for word in words]
+    parts = [[part for part in re.split(r"[_\-. ]", word) if part] for word in words]
     shared = []
     for same in zip(*parts, strict=False):
         if len(set(same)) > 1:
@@ -195,7 +240,8 @@ def _draft_channels(logs):
     for log, (_, _, finding) in logs.items():
         for column, unit_text in finding.data_columns.items():
             guess = guess_channel(column, unit_text)
-            row = {"log": log, "column": column, "point": "1", **guess}
+            own = log if guess["kind"] == "log" else ""
+            row = {"log": log, "column": column, "id": own, "point": "1", **guess}
             asked = f"{column!r} ({unit_text})" if unit_text else repr(column)
             perhaps = f" Perhaps {guess['quantity']}?" if guess["quantity"] else ""
             lines.append(f"# QUESTION: what is {asked} of log {log!r}?{perhaps}\n")

@@ -9,10 +9,11 @@ WRITTEN_UNITS = {
     "v": "V", "volt": "V", "volts": "V", "vdc": "V", "mv": "mV", "uv": "uV", "µv": "uV",
     "μv": "uV", "microvolts": "uV", "millivolts": "mV",
     "a": "A", "ma": "mA", "amps": "A",
-    "%": "%", "percent": "%", "%rh": "%",
+    "1": "1", "%": "%", "percent": "%", "%rh": "%",
     "pa": "Pa", "hpa": "hPa", "mbar": "hPa", "kpa": "kPa", "mpa": "MPa",
     "w/m^2": "W m-2", "w/m2": "W m-2", "w/m²": "W m-2", "wm-2": "W m-2", "watts/meter^2": "W m-2",
     "m/s": "m s-1", "ms-1": "m s-1", "meters/second": "m s-1",
+    "km/h": "km h-1", "km/hr": "km h-1", "kmh-1": "km h-1", "kph": "km h-1",
     "cm/h": "cm h-1", "cm/hr": "cm h-1", "cmh-1": "cm h-1", "mm/h": "mm h-1",
     "mm": "mm", "cm": "cm", "m": "m", "um": "um", "µm": "um",
     "m3/m3": "m3 m-3", "m^3/m^3": "m3 m-3", "m3m-3": "m3 m-3",
@@ -30,9 +31,9 @@ NAMES = [
     (r"air_?t|t_?air|airtc|^ta(_|$)", "site", "air_temperature", ("degC", "K", "degF", "")),
     (r"net_?rad|^rn", "site", "net_radiation", ("W m-2",)),
     (r"slr|solar|short_?wave|sw_?in|global|^rg|rad", "site", "shortwave_radiation", ("W m-2",)),
-    (r"rain|precip", "site", "precipitation", ("mm", "mm water", "")),
-    (r"throughfall|^tf", "stand", "throughfall", ("mm", "mm water", "")),
-    (r"wind|^ws", "site", "wind_speed", ("m s-1", "")),
+    (r"rain|precip", "site", "precipitation", ("mm", "")),
+    (r"throughfall|^tf", "stand", "throughfall", ("mm", "")),
+    (r"wind|^ws", "site", "wind_speed", ("m s-1", "km h-1", "")),
     (r"pressure|baro|^bp", "site", "air_pressure", ("Pa", "hPa", "kPa")),
     (r"vwc|soil_?m|swc|theta", "stand", "soil_moisture", ("m3 m-3", "%", "1", "")),
     (r"discharge|runoff", "site", "discharge", ("m3 s-1", "L s-1", "")),
@@ -71,7 +72,5 @@ def guess_channel(column, unit_text):
     unit = written_unit(unit_text) or (written_unit(inside[1]) if inside else "")
     for pattern, kind, quantity, units in NAMES:
         if unit in units and re.search(pattern, column.lower()):
-            if unit == "mm" and quantity in ("precipitation", "throughfall"):
-                unit = "mm water"
             return {"kind": kind, "quantity": quantity, "unit": unit}
     return {"kind": "", "quantity": "", "unit": unit}

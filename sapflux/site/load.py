@@ -1,5 +1,6 @@
 """`load_site`: a site folder as one validated object, or every fault of it at once."""
 
+import difflib
 import tomllib
 from pathlib import Path
 
@@ -9,11 +10,13 @@ from sapflux.errors import Fault, SiteError, nearest
 from sapflux.site.checks import cross_faults
 from sapflux.site.config import Layout, Log, Position, SiteConfig
 from sapflux.site.csvfile import Table, read_table, read_text
+from sapflux.site.gathering import gathered
 from sapflux.site.messages import plain
 from sapflux.site.model import Site
 from sapflux.site.reading import Reading
 from sapflux.site.tables import TABLES
 
+SPREADSHEETS = (".xlsx", ".xls", ".ods")
 # Stands in while `[site]` is at fault, so that the tables can be checked all the same.
 SOMEWHERE = Position.model_construct(
     name="", latitude_deg=0.0, longitude_deg=0.0, elevation_m=0.0, utc_offset_h=0.0,
@@ -30,7 +33,7 @@ def load_site(folder):
     reading, faults = read_site(folder)
     faults += cross_faults(reading)
     if faults:
-        raise SiteError(faults)
+        raise SiteError(gathered(faults))
     return reading.site
 
 
@@ -86,6 +89,8 @@ def read_config(path):
     raw["whole"]["site"] = not wrong
     faults += wrong
     for part, model in (("layouts", Layout), ("logs", Log)):
+        if part not in document and difflib.get_close_matches(part, document, n=1):
+            continue  # misspelt, and told as an unknown key: its names are not known
         sections = document.get(part, {})
         if not isinstance(sections, dict):
             faults.append(
@@ -174,6 +179,13 @@ def _file_faults(folder, logs):
                 "Keep downloads in a folder of their own and name it, like 'raw/*.csv'.",
             )
     for path in sorted(folder.iterdir()):
+        if path.suffix.lower() in SPREADSHEETS and not path.name.startswith((".", "~$")):
+            yield Fault(
+                str(path),
+                "the file is a spreadsheet, and tables are read as CSV",
+                "Save it as CSV in UTF-8 under the name of its table, or keep it in a folder of "
+                "its own.",
+            )
         if path.name.startswith(".") or path.suffix.lower() != ".csv" or path in downloads:
             continue
         if path.name not in {f"{name}.csv" for name in TABLES}:

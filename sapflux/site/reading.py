@@ -49,8 +49,25 @@ class Reading:
             return
         source = "site.toml" if table in ("logs", "layouts") else f"{table}.csv"
         known = {one for one in self.known(table, column) if one}
+        if not known and source == "site.toml":
+            yield self._no_section(what, table)
+            return
         hint = nearest(name, known) if known else "Add it there: the table names none."
         yield Fault(where, f"{what} {name!r} is not in {source}", hint)
+
+    def _no_section(self, what, part):
+        """The fault of a `site.toml` without any log or layout; the same for every name."""
+        if part == "logs":
+            tables = ("channels", "visits", "decisions")
+            named = {row.log for table in tables for row in self.site.table(table)}
+            named |= {row.id for row in self.site.table("exclusions") if row.kind == "log"}
+        else:
+            named = {log.layout for log in self.site.logs.values()}
+        return Fault(
+            f"{self.site.folder}/site.toml",
+            f"there is no section [{part}.NAME]",
+            f"Begin one for each {what} that is named: {', '.join(sorted(named))}.",
+        )
 
 
 def parted(where, what, name):

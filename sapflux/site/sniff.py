@@ -188,7 +188,7 @@ def _data_start(path, rows, width):
 
 def _header_roles(header):
     """Which header line holds the names, the units and the kind of aggregation."""
-    roles, names = {}, []
+    roles, names, full = {}, [], False
     for line, cells in header:
         words = [cell.strip() for cell in cells if cell.strip()]
         if not words:
@@ -197,8 +197,12 @@ def _header_roles(header):
             roles["aggregation_line"] = line
         elif names and _are_units(words):
             roles["units_line"] = line
+        elif full and len(words) < len(cells):  # below a line that names every column
+            if any(map(written_unit, words)):
+                roles["units_line"] = line
         else:
             names.append(line)
+            full = full or len(words) == len(cells)
     if names:
         roles = {"names_line": names[-1], **roles}
     return roles

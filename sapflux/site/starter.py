@@ -1,8 +1,14 @@
 """The text of a starter site: every key explained, every table with its header."""
 
+from sapflux.site.quantities import table_lines
+
 SITE_TOML = """\
 # What is there: position, clock, logs and their layouts. How data are treated stands in the
 # recipe. All values here are examples: put your own in their place.
+#
+# Tables stand beside this file as CSV: a line of column names, then one row a line. A message of
+# 'row 4' means line 4 of the file, as an editor or a spreadsheet counts it: the line of column
+# names is counted, and so are comments (lines that begin with '#') and blank lines.
 
 [site]
 name = "My site"
@@ -48,7 +54,8 @@ TIMES = "Times are the site's fixed standard time; a blank end is open."
 EXAMPLES = {
     "channels": (
         ("Which logger column is what. kind: probe, tree, log, stand or site; id: its name, blank",
-         f"for the site; point 1 is the outermost of a needle. {TIMES}"),
+         f"for the site; point 1 is the outermost of a needle. {TIMES}",
+         *table_lines()),
         ({"log": "T1", "column": "dT_P01", "kind": "probe", "id": "P01", "point": "1",
           "quantity": "heated_emf", "unit": "mV"},
          {"log": "T1", "column": "AirT", "kind": "site", "point": "1",
@@ -65,7 +72,7 @@ EXAMPLES = {
     ),
     "trees": (
         ("Trees that carry probes. Their diameters stand in surveys.csv under the same name; one",
-         "outside all plots has its diameter_cm (over bark) here."),
+         "outside all plots has its diameter_cm (over bark) here, which is blank for all others."),
         ({"tree": "A01", "stand": "slope", "species": "spruce", "height_m": "24",
           "bark_mm": "8"},),
     ),

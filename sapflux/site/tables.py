@@ -6,9 +6,9 @@ Units stand in the column names. A blank cell takes the field's default.
 
 from typing import Annotated, ClassVar, Literal
 
-from pydantic import BaseModel, ConfigDict, Field
+from pydantic import BaseModel, ConfigDict, Field, ValidationInfo, field_validator
 
-from sapflux import schema
+from sapflux import schema, units
 from sapflux.site.cells import (
     Day,
     Moment,
@@ -32,6 +32,11 @@ class Row(BaseModel):
         allow_inf_nan=False,
     )
 
+    @classmethod
+    def blank_remedy(cls, column, given):
+        """What would be right in a blank cell of a row with the given cells; '' for anything."""
+        return ""
+
 
 Start = Annotated[Moment | None, Field(default=None, alias="from")]
 Method = Literal["heat_dissipation", "heat_ratio", "unheated_pair"]
@@ -49,6 +54,18 @@ class Channel(Row):
     unit: Name
     from_: Start
     to: Moment | None = None
+
+    @field_validator("unit")
+    @classmethod
+    def _one_spelling(cls, value, info: ValidationInfo):
+        return units.meant(value, info.data.get("quantity"))
+
+    @classmethod
+    def blank_remedy(cls, column, given):
+        """The units of the row's quantity, where the unit is blank."""
+        if column != "unit" or given.get("quantity") not in schema.QUANTITIES:
+            return ""
+        return f"Units of {given['quantity']}: {', '.join(units.accepted(given['quantity']))}."
 
 
 class Probe(Row):

@@ -183,6 +183,13 @@ def test_every_setting_that_carries_a_unit_in_its_name_prints_that_unit(capsys):
     assert seen == set(endings)
 
 
+def test_stages_lists_quantities_with_units_and_kinds(capsys):
+    assert main(["stages", "--quantities"]) == 0
+    told = capsys.readouterr().out
+    row = next(line for line in told.splitlines() if line.split()[0] == "heated_emf")
+    assert "mV" in row and row.split()[-1] == "probe"
+
+
 def test_stages_names_the_nearest_of_an_unknown_one(capsys):
     assert main(["stages", "flow_indx"]) == 2
     assert "Did you mean 'flow_index'?" in capsys.readouterr().err

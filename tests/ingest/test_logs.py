@@ -8,7 +8,9 @@ from hypothesis import strategies as st
 from log_by_hand import CLASSES, HEAD, make_site, read
 
 from sapflux.errors import DataError
-from sapflux.ingest.logs import match_files, read_header, read_log
+from sapflux.ingest.files import match_files
+from sapflux.ingest.heads import read_head
+from sapflux.ingest.logs import read_log
 from sapflux.site.config import Layout
 
 ROWS = "2031-06-01 00:10:00,1.5,2\n2031-06-01 00:20:00,3,4\n"
@@ -34,7 +36,7 @@ def test_no_file_matches(tmp_path):
 def header(tmp_path, content, **layout):
     path = tmp_path / "T07.dat"
     path.write_bytes(content if isinstance(content, bytes) else content.encode())
-    return read_header(path, Layout(**layout))
+    return read_head(path, Layout(**layout), path.name).columns
 
 
 def test_the_header_of_a_file(tmp_path):
@@ -65,7 +67,7 @@ def test_no_more_than_64_kb_of_a_file_are_read_for_its_header(tmp_path, monkeypa
             return taken[-1]
 
     monkeypatch.setattr(Path, "open", lambda self, *mode: Counted(opened(self, *mode)))
-    assert read_header(path, Layout()) == ("TIMESTAMP", "A", "B")
+    assert read_head(path, Layout(), path.name).columns == ("TIMESTAMP", "A", "B")
     assert [len(part) for part in taken] == [65536]
 
 
@@ -88,7 +90,7 @@ def test_a_header_that_cannot_be_read(tmp_path):
         return str(caught.value)
 
     assert message("\r\n") == (
-        "T07.dat: the file is empty. Remove it, or download it again."
+        "T07.dat: the file is empty: it holds nothing to read."
     )  # fmt: skip
     assert message("Time;A;B\n") == (
         "T07.dat: no line holds the column names TIMESTAMP; line 1 is 'Time;A;B'. Correct "
@@ -104,7 +106,7 @@ def test_a_header_that_cannot_be_read(tmp_path):
 
 def test_a_file_that_is_not_there(tmp_path):
     with pytest.raises(DataError) as caught:
-        read_header(tmp_path / "gone.dat", Layout())
+        read_head(tmp_path / "gone.dat", Layout(), "gone.dat")
     assert str(caught.value) == (
         "gone.dat: the file cannot be read (No such file or directory). "
         "Check that it is there, and that no other program holds it open."

@@ -3,6 +3,7 @@
 import pytest
 from folder_by_hand import faults_of, write_folder
 
+from sapflux import units
 from sapflux.site.load import load_site
 
 # what is wrong -> (changes of the folder, its faults)
@@ -68,6 +69,37 @@ CASES = {
     "unit of another quantity": (
         [("channels.csv", "heated_emf,mV", "heated_emf,degC")],
         [("ridge/channels.csv, row 2: unit 'degC' does not fit heated_emf. Known: V, mV, uV.")],
+    ),
+    "unit that is blank": (
+        [("channels.csv", "heated_emf,mV", "heated_emf,")],
+        ["ridge/channels.csv, row 2: unit is blank. Units of heated_emf: V, mV, uV."],
+    ),
+    "unit and quantity that are blank": (
+        [("channels.csv", "heated_emf,mV", ",")],
+        [
+            "ridge/channels.csv, row 2: quantity is blank. Give its value: the row has no meaning "
+            "without it.",
+            "ridge/channels.csv, row 2: unit is blank. Give its value: the row has no meaning "
+            "without it.",
+        ],
+    ),
+    "wind in a unit of sap": (
+        [("channels.csv", "air_temperature,degC", "wind_speed,cm h-1")],
+        [
+            "ridge/channels.csv, row 6: unit 'cm h-1' does not fit wind_speed. Did you mean "
+            "'km h-1'? Known: km h-1, m s-1."
+        ],
+    ),
+    "humidity by volume": (
+        [("channels.csv", "air_temperature,degC", "relative_humidity,m3 m-3")],
+        ["ridge/channels.csv, row 6: unit 'm3 m-3' does not fit relative_humidity. Known: %, 1."],
+    ),
+    "rain in a unit of pressure": (
+        [("channels.csv", "air_temperature,degC", "precipitation,kPa")],
+        [
+            "ridge/channels.csv, row 6: unit 'kPa' does not fit precipitation. Known: kg m-2, mm, "
+            "mm water."
+        ],
     ),
     "unit of a difference": (
         [("channels.csv", "heated_emf,mV", "heated_difference,mV")],
@@ -282,6 +314,17 @@ def test_heat_dissipation_is_right_with_a_voltage_or_kelvin(tmp_path, monkeypatc
     monkeypatch.chdir(tmp_path)
     for signal in ("heated_emf,mV", "heated_difference,K"):
         assert load_site(write_folder([("channels.csv", "heated_emf,mV", signal)]))
+
+
+def test_millimetres_of_rain_are_a_depth_of_water(tmp_path, monkeypatch):
+    monkeypatch.chdir(tmp_path)
+    changes = [
+        ("channels.csv", "air_temperature,degC", "precipitation,mm"),
+        ("channels.csv", "T1,Batt,log,T1,1,battery_voltage,V", "T1,h,site,,1,stage,mm"),
+    ]
+    rain, stage = load_site(write_folder(changes)).table("channels")[-2:]
+    assert units.to_si(2.5, rain.unit) == 2.5  # kg m-2
+    assert units.to_si(2.5, stage.unit) == 2.5e-3  # m
 
 
 @pytest.mark.parametrize("case", CASES)

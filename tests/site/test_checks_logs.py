@@ -8,6 +8,59 @@ from sapflux.site.load import load_site
 
 # what is wrong -> (changes of the folder, its faults)
 CASES = {
+    "standard time of elsewhere": (
+        [("site.toml", "utc_offset_h = 1.0", "utc_offset_h = 8.0")],
+        [
+            (
+                "ridge/site.toml, [site]: utc_offset_h is 8, and by longitude_deg 15 the sun is "
+                "+1.0 h from UTC. They lie within 3 h of each other: mend the one that is wrong; "
+                "east is positive in both."
+            )
+        ],
+    ),
+    "longitude of the other hemisphere": (
+        [
+            ("site.toml", "longitude_deg = 15.0", "longitude_deg = 122.7"),
+            ("site.toml", "utc_offset_h = 1.0", "utc_offset_h = -8.0"),
+        ],
+        [
+            (
+                "ridge/site.toml, [site]: utc_offset_h is -8, and by longitude_deg 122.7 the sun "
+                "is +8.2 h from UTC. They lie within 3 h of each other: mend the one that is "
+                "wrong; east is positive in both."
+            )
+        ],
+    ),
+    "fixed clock of elsewhere": (
+        [("site.toml", 'clock = "utc+1"', 'clock = "utc-5.5"')],
+        [
+            (
+                "ridge/site.toml, [logs.T1]: clock 'utc-5.5' has the standard offset -5.5 h, and "
+                "utc_offset_h of the site is 1. They lie within 3 h of each other, unless the "
+                "clock keeps 'utc': mend the one that is wrong."
+            )
+        ],
+    ),
+    "civil clock of elsewhere": (
+        [("site.toml", "civil:Europe/Vienna", "civil:America/Santiago")],
+        [
+            (
+                "ridge/site.toml, [logs.H1]: clock 'civil:America/Santiago' has the standard "
+                "offset -4 h, and utc_offset_h of the site is 1. They lie within 3 h of each "
+                "other, unless the clock keeps 'utc': mend the one that is wrong."
+            )
+        ],
+    ),
+    "time column without a name": (
+        [("site.toml", "units_line = 3", 'units_line = 3\ntime_columns = ["date", " "]')],
+        [
+            (
+                "ridge/site.toml, [layouts.wide]: time_columns is ['date', ' '], and a name is "
+                "blank. Columns are found by name: see that names_line is the line of the names, "
+                "or name the column in a copy of the file."
+            )
+        ],
+    ),
     "layout of a log that is not there": (
         [("site.toml", 'layout = "wide"', 'layout = "wyde"')],
         [
@@ -113,6 +166,40 @@ def test_stamps_with_their_own_offset_are_read_from_a_checked_folder(tmp_path, m
     assert [row[1:3] for row in series.rejected] == [
         (5, "time '2026-05-01 12:10' does not read as '%Y-%m-%d %H:%M %z'")
     ]
+
+
+# Source: the IANA time zone table, and longitudes of the places from memory.
+@pytest.mark.parametrize(
+    ("longitude", "offset", "zone"),
+    [
+        (76.0, 8.0, "Asia/Shanghai"),  # Kashgar: 2.9 h
+        (-157.4, 14.0, "Pacific/Kiritimati"),  # behind the date line
+        (-8.5, -0.0, "Europe/Dublin"),
+        (150.0, 10.0, "Australia/Sydney"),  # summer time in January
+        (-9.5, 1.0, "Africa/Casablanca"),
+    ],
+)
+def test_standard_times_in_use_are_right(longitude, offset, zone, tmp_path, monkeypatch):
+    monkeypatch.chdir(tmp_path)
+    changes = [
+        ("site.toml", "longitude_deg = 15.0", f"longitude_deg = {longitude}"),
+        ("site.toml", "utc_offset_h = 1.0", f"utc_offset_h = {offset}"),
+        ("site.toml", "civil:Europe/Vienna", f"civil:{zone}"),
+        ("site.toml", 'clock = "utc+1"', 'clock = "utc"'),
+    ]
+    assert load_site(write_folder(changes)).position.utc_offset_h == offset
+
+
+@pytest.mark.parametrize("clock", ["utc", "utc+0", "civil:UTC", "civil:Etc/UTC"])
+def test_a_logger_anywhere_may_keep_utc(clock, tmp_path, monkeypatch):
+    monkeypatch.chdir(tmp_path)
+    changes = [
+        ("site.toml", "longitude_deg = 15.0", "longitude_deg = 175.0"),
+        ("site.toml", "utc_offset_h = 1.0", "utc_offset_h = 12.0"),
+        ("site.toml", 'clock = "utc+1"', f'clock = "{clock}"'),
+        ("site.toml", "civil:Europe/Vienna", "civil:Pacific/Auckland"),
+    ]
+    assert load_site(write_folder(changes)).logs["T1"].clock == clock
 
 
 @pytest.mark.parametrize("case", CASES)

@@ -30,8 +30,8 @@ CASES = {
         ],
         [
             (
-                "ridge/surveys.csv, row 5: species 'birch' is not in species.csv. Did you mean "
-                "'beech'? Known: beech, oak, spruce."
+                "ridge/surveys.csv, rows 5 and 6: species 'birch' is not in species.csv. Did you "
+                "mean 'beech'? Known: beech, oak, spruce."
             )
         ],
     ),

@@ -5,6 +5,22 @@ from folder_by_hand import faults_of, write_folder
 
 # what is wrong -> (changes of the folder, its faults)
 CASES = {
+    "diameter here and in the survey": (
+        [
+            (
+                "trees.csv",
+                "bark_mm\nA,slope,spruce,10\nB,slope,beech,\n",
+                "bark_mm,diameter_cm\nA,slope,spruce,10,5\nB,slope,beech,,\n",
+            )
+        ],
+        [
+            (
+                "ridge/trees.csv, row 2: tree 'A' has diameter_cm 5 here and 30 in surveys.csv. "
+                "Leave it blank here, where it is for trees outside all plots; a decimal comma "
+                "in the row may have shifted its cells."
+            )
+        ],
+    ),
     "tree with a name that parts": (
         [("trees.csv", "B,slope,beech,\n", "B,slope,beech,\nC/1,slope,oak,\n")],
         [

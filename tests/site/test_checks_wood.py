@@ -153,12 +153,8 @@ CASES = {
         ],
         [
             (
-                "ridge/profiles.csv, row 2: the row names neither species nor tree. Name one of "
-                "them: species or tree."
-            ),
-            (
-                "ridge/profiles.csv, row 3: the row names neither species nor tree. Name one of "
-                "them: species or tree."
+                "ridge/profiles.csv, rows 2 and 3: the row names neither species nor tree. Name "
+                "one of them: species or tree."
             ),
         ],
     ),

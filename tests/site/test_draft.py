@@ -7,7 +7,9 @@ from pathlib import Path
 
 import pytest
 
+from sapflux.cli import main
 from sapflux.errors import SiteError
+from sapflux.schema import QUANTITIES
 from sapflux.site.config import Layout
 from sapflux.site.draft import draft_from_files, write_starter
 from sapflux.site.load import load_site
@@ -269,6 +271,134 @@ def test_every_file_that_cannot_be_made_out_is_told_and_nothing_written():
         "absent.dat: the file cannot be read (No such file or directory). Name a logger file.",
     ]
     assert not Path("site").exists()
+
+
+def test_a_line_of_units_is_not_taken_for_the_names():
+    rows = [f"{t}\t1.5\t0.02" for t in times(30, 30, "%Y/%m/%d\t%H:%M:%S")]
+    head = ["date\tclock\tP1_v\tP2_lnr", "\t\tcm h-1\t1"]
+    toml, channels = drafted(write("pulse.tsv", "\n".join([*head, *rows])))
+    layout = Layout(**toml["layouts"]["layout1"])
+    assert (layout.names_line, layout.units_line, layout.header_lines) == (1, 2, 2)
+    assert layout.time_columns == ("date", "clock")
+    assert [(r["column"], r["unit"]) for r in channels] == [("P1_v", "cm h-1"), ("P2_lnr", "1")]
+
+
+def test_a_line_with_blank_cells_and_unknown_units_is_not_taken_for_the_names():
+    rows = [f"{t},1.5,0.02,3" for t in times(30, 30, "%Y-%m-%d %H:%M")]
+    toml, channels = drafted(write("odd.csv", "\n".join(["when,a,b,c", ",furlong,mV,ell", *rows])))
+    layout = Layout(**toml["layouts"]["layout1"])
+    assert (layout.names_line, layout.units_line, layout.time_columns) == (1, 2, ("when",))
+    assert [(r["column"], r["unit"]) for r in channels] == [("a", ""), ("b", "mV"), ("c", "")]
+
+
+@pytest.mark.parametrize(
+    ("files", "log"),
+    [
+        (("pulse_b_2031-09-03.tsv",), "pulse_b"),
+        (("T1_2031-09-03_1200.tsv",), "T1"),
+        (("2031-09-03_ridge.tsv",), "ridge"),
+        (("ridge.20310903.tsv",), "ridge"),
+        (("met 03.09.2031.tsv",), "met"),
+        (("T1_2031-09.tsv", "T1_2031-10.tsv"), "T1"),
+        (("2031-09-03.tsv",), "log"),
+        (("CR7_17345.tsv",), "CR7_17345"),
+    ],
+)
+def test_logs_are_named_without_the_dates_of_their_files(files, log):
+    toml, _ = drafted(*(write(name, long_table()) for name in files))
+    assert list(toml["logs"]) == [log]
+
+
+def test_files_whose_columns_stand_in_another_order_are_one_log():
+    moments = times(30, 30, "%Y-%m-%d %H:%M")
+    one = write("T1_a.csv", "\n".join(["time,a,b", *(f"{t},1.5,2" for t in moments)]))
+    two = write("T1_b.csv", "\n".join(["time,b,a", *(f"{t},2,1.5" for t in moments)]))
+    toml, rows = drafted(one, two)
+    assert toml["logs"]["T1"]["files"] == ["raw/T1_a.csv", "raw/T1_b.csv"]
+    assert [r["column"] for r in rows] == ["a", "b"]
+
+
+def test_a_channel_of_the_log_itself_names_it():
+    _, rows = drafted(write("T1.dat", wide()))
+    assert [r["id"] for r in rows] == ["", "T1", "", "", ""]  # the battery
+
+
+def test_two_files_of_one_name_are_told():
+    Path("may").mkdir()
+    files = [write("T1.dat", wide()), write("may/T1.dat", wide())]
+    assert faults_of(draft_from_files, "site", files) == [
+        "may/T1.dat: T1.dat has the same name. All downloads go into one folder, raw/: give each a "
+        "name of its own."
+    ]
+
+
+def test_a_file_that_is_named_twice_is_taken_once():
+    toml, _ = drafted(write("T1.dat", wide()), "T1.dat", Path("T1.dat").resolve())
+    assert toml["logs"]["T1"]["files"] == ["raw/T1.dat"]
+
+
+def test_a_folder_that_cannot_be_written_is_told():
+    log = write("T1.dat", wide())
+    fault = "T1.dat/new: it cannot be written (Not a directory). Name a folder where you may write."
+    assert faults_of(write_starter, "T1.dat/new") == [fault]
+    assert faults_of(draft_from_files, "T1.dat/new", [log]) == [fault]
+
+
+def test_a_file_that_cannot_be_written_is_told(monkeypatch):
+    def full(*_, **__):
+        raise OSError(28, "No space left on device")
+
+    monkeypatch.setattr(Path, "write_text", full)
+    assert faults_of(write_starter, "start") == [
+        "start/site.toml: it cannot be written (No space left on device). Name a folder where you "
+        "may write."
+    ]
+
+
+def test_starter_and_draft_say_what_a_channel_may_be():
+    write_starter("start")
+    draft_from_files("site", [write("T1.dat", wide())])
+    for folder in ("start", "site"):
+        lines = Path(f"{folder}/channels.csv").read_text(encoding="utf-8").splitlines()
+        told = [[cell.strip() for cell in line[2:].split("|")] for line in lines if "|" in line]
+        assert told[0] == ["quantity", "units it may be written in", "kinds it may belong to"]
+        assert [name for name, *_ in told[1:]] == list(QUANTITIES)
+        assert ["wind_speed", "m s-1, km h-1", "site, stand"] in told
+        assert ["precipitation", "mm, mm water, kg m-2", "site, stand"] in told
+
+
+def test_starter_and_draft_say_what_a_row_of_a_message_is():
+    write_starter("start")
+    draft_from_files("site", [write("T1.dat", wide())])
+    for folder in ("start", "site"):
+        assert "'row 4'" in Path(f"{folder}/site.toml").read_text(encoding="utf-8")
+
+
+def test_the_command_counts_its_questions_and_expands_patterns(capsys):
+    write("T1_a.dat", wide())
+    write("T1_b.dat", wide(60))
+    assert main(["init", "site", "--from", "T1_?.dat"]) == 0
+    last = capsys.readouterr().out.splitlines()[-2:]
+    # the site, one logger or two, stamp and clock; five columns beside the time
+    assert last == [
+        "Next: answer the lines marked QUESTION (4 in site.toml, 5 in channels.csv), put the "
+        "downloads into raw/, then run",
+        "  sapflux check site",
+    ]
+
+
+def test_a_pattern_that_matches_nothing_is_told(capsys):
+    assert main(["init", "site", "--from", "*.dat"]) == 2
+    assert capsys.readouterr().err.splitlines()[0] == (
+        "*.dat: the file cannot be read (No such file or directory). Name a logger file."
+    )
+
+
+def test_a_file_with_the_marks_of_a_pattern_in_its_name_is_itself(capsys):
+    write("T1[2].dat", wide())
+    write("T12.dat", "")
+    assert main(["init", "site", "--from", "T1[2].dat"]) == 0
+    assert 'files = ["raw/T1[[]2].dat"]' in Path("site/site.toml").read_text(encoding="utf-8")
 
 
 def test_no_file_at_all():

@@ -225,6 +225,42 @@ def test_seconds_and_a_t_between_date_and_time_are_read():
     )
 
 
+DELIMITED = {
+    "semicolons over commas": (
+        TREES.replace("tree,stand,species,bark_mm", "tree;stand;species;bark_mm"),
+        "ridge/trees.csv, rows 2 and 3: the header is delimited by ';' and the row by ','. Save "
+        "the table with one delimiter throughout.",
+    ),
+    "commas over semicolons with decimal commas": (
+        TREES.replace("A,slope,spruce,10", "A;slope;spruce;10,5").replace("B,", "#"),
+        "ridge/trees.csv, row 2: the header is delimited by ',' and the row by ';'. Save the "
+        "table with one delimiter throughout.",
+    ),
+    "commas over tabs": (
+        TREES.replace("B,slope,beech,", "B\tslope\tbeech\t"),
+        "ridge/trees.csv, row 3: the header is delimited by ',' and the row by a tab. Save the "
+        "table with one delimiter throughout.",
+    ),
+}
+
+
+@pytest.mark.parametrize("case", DELIMITED)
+def test_rows_delimited_unlike_the_header_are_told_and_nothing_that_follows(case):
+    text, fault = DELIMITED[case]
+    assert faults_of(with_bytes("trees.csv", text.encode())) == [fault]
+
+
+@pytest.mark.parametrize("name", ["trees.xlsx", "old.XLS", "plots.ods"])
+def test_a_spreadsheet_file_is_told(name):
+    folder = write_folder()
+    (folder / name).write_bytes(b"PK")
+    (folder / "~$trees.xlsx").write_bytes(b"")  # what an open spreadsheet leaves beside it
+    assert faults_of(folder) == [
+        f"ridge/{name}: the file is a spreadsheet, and tables are read as CSV. Save it as CSV in "
+        "UTF-8 under the name of its table, or keep it in a folder of its own."
+    ]
+
+
 KEYS = {
     "toml itself": (
         ('name = "Ridge"', "name = Ridge"),
@@ -390,6 +426,39 @@ def test_faults_of_the_toml_and_of_tables_come_at_once():
     assert [fault.split(": ")[0] for fault in faults_of(folder)] == [
         "ridge/site.toml, [site]",
         "ridge/cores.csv, row 3",
+    ]
+
+
+@pytest.mark.parametrize(("written", "known"), [("log", "logs"), ("Logs", "logs")])
+def test_a_misspelt_group_of_logs_is_told_once(written, known):
+    text = TEXTS["site.toml"].replace("[logs.", f"[{written}.")
+    assert faults_of(with_bytes("site.toml", text.encode())) == [
+        f"ridge/site.toml: unknown key '{written}'. Did you mean '{known}'? Known: layouts, logs, "
+        "site."
+    ]
+
+
+def test_a_misspelt_group_of_layouts_is_told_once():
+    text = TEXTS["site.toml"].replace("[layouts.", "[layout.")
+    assert faults_of(with_bytes("site.toml", text.encode())) == [
+        "ridge/site.toml: unknown key 'layout'. Did you mean 'layouts'? Known: layouts, logs, site."
+    ]
+
+
+def test_a_site_without_logs_whose_tables_name_some_is_told_once():
+    text = TEXTS["site.toml"].partition("[logs.")[0]
+    assert faults_of(with_bytes("site.toml", text.encode())) == [
+        "ridge/site.toml: there is no section [logs.NAME]. Begin one for each log that is named: "
+        "H1, T1."
+    ]
+
+
+def test_a_site_without_layouts_is_told_once():
+    text = TEXTS["site.toml"]
+    start, end = text.index("[layouts.wide]"), text.index("[logs.T1]")
+    assert faults_of(with_bytes("site.toml", (text[:start] + text[end:]).encode())) == [
+        "ridge/site.toml: there is no section [layouts.NAME]. Begin one for each layout that is "
+        "named: long, wide."
     ]
 
 
