@@ -1,6 +1,7 @@
 """Civil time: the repeated hour by file order, the hour that does not exist."""
 
 from itertools import pairwise
+from pathlib import Path
 
 import numpy as np
 import pytest
@@ -39,6 +40,16 @@ def test_the_hour_that_does_not_exist():
             '"utc+1" for this log.',
         )
     ]
+
+
+def test_hours_of_new_york_agree_with_a_published_table():
+    # Source: nycflights13, weather of station JFK, 2013 (see the head of the file).
+    path = Path(__file__).parent / "data" / "new_york_hours_2013.csv"
+    rows = [row.split(",") for row in path.read_text().splitlines() if row[0].isdigit()]
+    text = HEAD + "".join(f"{local_hour}:00,1,2\n" for local_hour, _ in rows)
+    series = read(text, clock="civil:America/New_York", interval_min=60.0)
+    assert reasons(series) == []
+    assert ends(series) == [utc.replace(" ", "T") for _, utc in rows]
 
 
 @pytest.mark.parametrize(
