@@ -3,6 +3,7 @@
 import csv
 import numbers
 import re
+from collections.abc import Hashable
 from datetime import date, datetime
 from pathlib import Path
 
@@ -85,12 +86,25 @@ def write_csv(frame, path, kind):
     unknown = [str(name) for name in frame.columns if name not in columns]
     if missing or unknown or len(frame.columns) != len(columns):
         raise ValueError(f"table {kind}: columns missing {missing}, not known {unknown}")
-    cells = [[_cell(value, name) for value in frame[name]] for name in columns]
+    cells = [_cells(frame[name], name) for name in columns]
     # A lone surrogate stands for a byte that is no text in the log's encoding.
     with Path(path).open("w", encoding="utf-8", errors="backslashreplace", newline="") as file:
         writer = csv.writer(file, lineterminator="\n")
         writer.writerow(columns)
         writer.writerows(zip(*cells, strict=True))
+
+
+def _cells(values, column):
+    """The cells of a column. Names, days and reasons recur, so each is made once."""
+    made = {}
+    cells = []
+    for value in values.tolist() if values.dtype.kind in "fiub" else values:
+        if not isinstance(value, Hashable):
+            raise ValueError(f"column {column}: {value!r} cannot be written")
+        if value not in made:
+            made[value] = _cell(value, column)
+        cells.append(made[value])
+    return cells
 
 
 def _cell(value, column):
