@@ -6,6 +6,7 @@ but some sites failed; 130 interrupted.
 
 import argparse
 import os
+import signal
 import sys
 
 from sapflux import __version__
@@ -30,6 +31,7 @@ def main(arguments=None):
     except UserError as error:
         return _tell(error, FAILED)
     except KeyboardInterrupt:
+        signal.signal(signal.SIGINT, signal.SIG_IGN)  # once is enough: let the end be orderly
         print("interrupted; what was finished before stands as it was", file=sys.stderr)
         return INTERRUPTED
     except BrokenPipeError:  # who reads has seen enough
@@ -112,6 +114,28 @@ def parser():
         "--quantities", action="store_true", help="what a logger column may be, and in which units"
     )
     stages.set_defaults(command=_stages)
+
+    rehearse = commands.add_parser(
+        "rehearse", help="the site's own design on a virtual forest whose truth is known"
+    )
+    rehearse.add_argument("site", metavar="SITE", help="site folder; a plan without logs will do")
+    rehearse.add_argument("--years", type=_count, metavar="N", help="default: one growing season")
+    rehearse.add_argument("--seed", type=int, default=1, metavar="S", help="default: 1")
+    rehearse.add_argument(
+        "--recipe",
+        metavar="NAME",
+        default="stand_water_use",
+        help="recipe by name, or a TOML file; default: stand_water_use",
+    )
+    rehearse.add_argument(
+        "--knowledge",
+        choices=("estimated", "exact"),
+        default="estimated",
+        help="what the copy's tables know of the truth; default: estimated",
+    )
+    rehearse.add_argument("--out", metavar="DIR", default="rehearsals", help="default: rehearsals")
+    rehearse.add_argument("--json", action="store_true", help="print JSON alone")
+    rehearse.set_defaults(command=_rehearse)
     return top
 
 
@@ -155,3 +179,9 @@ def _stages(options):
     from sapflux.cli.stages import stages
 
     return stages(options)
+
+
+def _rehearse(options):
+    from sapflux.cli.rehearse import rehearse
+
+    return rehearse(options)

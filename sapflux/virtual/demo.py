@@ -1,12 +1,11 @@
 """The demo site written to disk: `python -m sapflux.virtual.demo configs/NAME tests/truth/NAME`."""
 
-import csv
-import io
 import sys
 from pathlib import Path
 
 from sapflux.virtual import demo_forest, demo_raw, demo_tables, demo_truth
 from sapflux.virtual import demo_plan as plan
+from sapflux.virtual.folder import config_text, csv_text
 
 
 def write_demo(configs_folder, truth_folder, seed=plan.SEED):
@@ -52,50 +51,15 @@ def write_demo(configs_folder, truth_folder, seed=plan.SEED):
     return written
 
 
-def csv_text(columns, rows):
-    """A CSV table as text, lines ended by a line feed.
-
-    >>> csv_text(["a", "b"], [["1", "x, y"]])
-    'a,b\\n1,"x, y"\\n'
-    """
-    out = io.StringIO()
-    writer = csv.writer(out, lineterminator="\n")
-    writer.writerow(columns)
-    writer.writerows(rows)
-    return out.getvalue()
-
-
 def site_text():
     """`site.toml` of the demo site."""
-    lines = [
-        "# The demo site: an invented catchment with two stands, written by sapflux.virtual.demo.",
-        "# Nothing here was measured. Its truth lies in tests/truth.",
-        "",
-        "[site]",
-        *_toml_lines(plan.POSITION, ()),
-    ]
-    for kind, parts in (("layouts", demo_raw.LAYOUTS), ("logs", demo_raw.LOGS)):
-        for name, part in parts.items():
-            lines += ["", f"[{kind}.{name}]", *_toml_lines(part, ("missing_text",))]
-    return "\n".join(lines) + "\n"
-
-
-def _toml_lines(model, skip):
-    """The fields of a config object that differ from their defaults, as lines of TOML."""
-    lines = []
-    for name, field in type(model).model_fields.items():
-        value = getattr(model, name)
-        if name not in skip and (field.is_required() or value != field.default):
-            lines.append(f"{name} = {_toml_value(value)}")
-    return lines
-
-
-def _toml_value(value):
-    if isinstance(value, tuple):
-        return f"[{', '.join(_toml_value(part) for part in value)}]"
-    if isinstance(value, str):
-        return '"' + value.replace("\\", "\\\\").replace('"', '\\"') + '"'
-    return repr(value)
+    comment = (
+        "The demo site: an invented catchment with two stands, written by sapflux.virtual.demo.",
+        "Nothing here was measured. Its truth lies in tests/truth.",
+    )
+    return config_text(
+        comment, plan.POSITION, demo_raw.LAYOUTS, demo_raw.LOGS, skip=("missing_text",)
+    )
 
 
 def main(arguments):

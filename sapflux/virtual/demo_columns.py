@@ -6,7 +6,7 @@ import numpy as np
 
 from sapflux.constants import ZERO_CELSIUS
 from sapflux.virtual import demo_plan as plan
-from sapflux.virtual import demo_signals, sensors
+from sapflux.virtual import demo_signals, sensors, signals
 from sapflux.virtual.forest import lagged
 from sapflux.virtual.seeds import generator
 
@@ -128,9 +128,7 @@ def _electrical_values(truth, log, every):
     """Supply, panel and heater: a battery that the sun charges by day."""
     weather = truth.weather
     sunny = lagged(weather.shortwave_radiation, 3600.0, weather.step_s) / 700.0
-    count = len(weather.end)
-    battery = 12.45 + 0.9 * np.minimum(sunny, 1.0)
-    battery = battery + generator(truth.seed, "battery", log).normal(0.0, 0.02, count)
+    battery = signals.battery_voltage(weather, sunny, generator(truth.seed, "battery", log))
     heater = 2.0 * demo_signals.powered_share(log, weather.end, weather.step_s)
     panel = weather.air_temperature - ZERO_CELSIUS + 4.0 * sunny
     series = {

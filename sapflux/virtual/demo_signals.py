@@ -3,7 +3,7 @@
 import numpy as np
 
 from sapflux.virtual import demo_plan as plan
-from sapflux.virtual import forest, sensors
+from sapflux.virtual import forest, signals
 from sapflux.virtual.seeds import generator
 
 
@@ -21,22 +21,17 @@ def flux_density(truth, stem, depths):
 
 def dissipation_emf(truth, probe, powered):
     """Voltage of a heat-dissipation probe at each record [V]. `powered`: share heated."""
-    stem, weather = truth.stem(probe.tree), truth.weather
-    depths, weights, share = sensors.needle_depths(
-        probe.needle_from, probe.needle_to, stem.sapwood_depth
+    stem = truth.stem(probe.tree)
+    emf = signals.dissipation_emf(
+        probe,
+        stem,
+        lambda depths: flux_density(truth, stem, depths),
+        truth.weather,
+        generator(truth.seed, "noise", probe.name),
+        powered,
     )
-    progress = np.arange(len(weather.end)) / (len(weather.end) - 1)
-    temperature = sensors.stem_temperature(weather)
-    zero = sensors.zero_flow_over_time(probe, progress)
-    flow = flux_density(truth, stem, depths)
-    difference = sensors.heated_difference(probe, flow, weights, share, zero)
-    difference = sensors.in_wood_of(difference, temperature, probe.conductivity_slope)
-    difference = difference * sensors.heater_response(powered, weather.step_s)
-    difference = difference + sensors.natural_gradient(probe, weather)
-    noise = generator(truth.seed, "noise", probe.name).normal(0.0, probe.noise, len(difference))
-    emf = sensors.heated_emf(difference + noise, temperature)
     if probe.name == plan.EXCLUDED[0]:
-        emf = _broken_cable(emf, weather.end, truth.seed)
+        emf = _broken_cable(emf, truth.weather.end, truth.seed)
     return emf
 
 
@@ -56,19 +51,13 @@ def ratio_signals(truth, probe, every):
     One record is `every` records of the weather's clock; its pulse sees their mean flow.
     """
     stem = truth.stem(probe.tree)
-    pairs = []
-    for point, (begin, end) in enumerate(zip(probe.depths_from, probe.depths_to, strict=True)):
-        depths, weights, _ = sensors.needle_depths(begin, end, stem.sapwood_depth)
-        flow = (weights[:, None] * flux_density(truth, stem, depths)).sum(axis=0)
-        flow = flow.reshape(-1, every).mean(axis=1)
-        velocity = sensors.apparent_velocity(probe, flow) + probe.offset[point]
-        rng = generator(truth.seed, "noise", f"{probe.name}/{point + 1}")
-        pairs.append([
-            rise + rng.normal(0.0, probe.noise, len(rise))
-            for rise in sensors.rises(probe, velocity)
-        ])  # fmt: skip
-    down, up = zip(*pairs, strict=True)
-    return np.array(down), np.array(up)
+    return signals.ratio_rises(
+        probe,
+        stem,
+        lambda depths: flux_density(truth, stem, depths),
+        every,
+        lambda point: generator(truth.seed, "noise", f"{probe.name}/{point + 1}"),
+    )
 
 
 def _broken_cable(emf, end, seed):

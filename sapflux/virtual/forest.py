@@ -5,6 +5,9 @@ from dataclasses import dataclass
 import numpy as np
 from scipy.signal import lfilter
 
+from sapflux.constants import ZERO_CELSIUS
+from sapflux.physics import atmosphere
+
 RINGS = 400  # thin rings in which a stem's flow is summed
 
 
@@ -25,6 +28,7 @@ class Response:
     storage_lag: float  # s
     fade_from: str = ""  # leaves age from this date on, blank: never
     fade_to: str = ""  # and end here
+    night_cooling: float = 0.0  # K, leaves below the air in the dark, as they radiate to the sky
 
 
 @dataclass(frozen=True)
@@ -58,17 +62,19 @@ class Stem:
         return np.pi * (self.xylem_radius**2 - inner**2)
 
 
-def outer_flux_density(response, deficit_ratio, weather, soil):
+def outer_flux_density(response, deficit_ratio, weather, soil, leaves=None):
     """Flux density just below the cambium at vigour 1, at each record [kg m-2 s-1].
 
-    weather : `Weather`; soil : (time) relative extractable water [1]. Never negative.
+    weather : `Weather`; soil : (time) relative extractable water [1]; leaves : (time)
+    share of the leaf area at work, None for that of the response. Never negative.
     """
     scale = response.deficit_scale * deficit_ratio
-    air = -np.expm1(-weather.vapour_pressure_deficit / scale)
+    air = -np.expm1(-_leaf_deficit(response, weather) / scale)
     light = weather.shortwave_radiation / (weather.shortwave_radiation + response.half_radiation)
     opening = response.dark_share + (1.0 - response.dark_share) * light
     wet = soil / (soil + response.half_soil_water) * (1.0 + response.half_soil_water)
-    demand = response.greatest_flux_density * air * opening * wet * _leaves(response, weather.end)
+    leaves = _leaves(response, weather.end) if leaves is None else leaves
+    demand = response.greatest_flux_density * air * opening * wet * leaves
     return lagged(demand, response.storage_lag, weather.step_s)
 
 
@@ -121,6 +127,22 @@ def flux_density_at(stem, nodes, outer, depth):
 def stem_flow(stem, nodes, outer):
     """Sap flow of the stem at each record [kg s-1]; 0 for a dead one."""
     return (stem.vigour if stem.alive else 0.0) * effective_area(stem, nodes) * outer
+
+
+def _leaf_deficit(response, weather):
+    """Deficit from leaf to air [Pa]: below that of the air where leaves are cooler; never under 0.
+
+    Leaves that cool below the dew point are wet and do not transpire. The cooling goes with the
+    light, the fall of saturation with the slope of FAO-56, equation 13.
+    """
+    air = weather.vapour_pressure_deficit
+    if not response.night_cooling:
+        return air
+    celsius = weather.air_temperature - ZERO_CELSIUS
+    saturated = atmosphere.saturation_vapour_pressure(weather.air_temperature)
+    slope = 4098.0 * saturated / (celsius + 237.3) ** 2
+    light = weather.shortwave_radiation / (weather.shortwave_radiation + response.half_radiation)
+    return np.maximum(air - slope * response.night_cooling * (1.0 - light), 0.0)
 
 
 def _leaves(response, end):

@@ -6,17 +6,18 @@ from zoneinfo import ZoneInfo
 import numpy as np
 
 
-def clock_times(end, log):
-    """What the logger's clock showed at each record, as naive `datetime`s.
+def clock_times(end, log, zoned=False):
+    """What the logger's clock showed at each record, as `datetime`s.
 
     end : (record) datetime64[s], end of the interval in UTC; log : clock, stamp, interval_min as
-    in `site.toml`.
+    in `site.toml`; zoned : keep the clock's offset from UTC, for stamps that print it.
     """
     if log.stamp == "start":
         end = end - np.timedelta64(round(log.interval_min * 60), "s")
     zone = _zone(log.clock)
     moments = (datetime.fromtimestamp(int(s), UTC) for s in end.astype("datetime64[s]").astype(int))
-    return [moment.astimezone(zone).replace(tzinfo=None) for moment in moments]
+    shown = (moment.astimezone(zone) for moment in moments)
+    return list(shown) if zoned else [moment.replace(tzinfo=None) for moment in shown]
 
 
 def stamp_cells(times, layout):
@@ -63,15 +64,29 @@ def header_lines(layout, names, units, aggregations, note):
 
     def line(cells):
         marked = [f"{layout.quote}{cell}{layout.quote}" for cell in cells] if quoted else cells
-        return layout.separator.join(marked)
+        return layout.separator.join(marked if quoted else [in_quotes(c, layout) for c in cells])
 
-    blank = [""] * (len(layout.time_columns) - 1)
+    empty = "-" if layout.delimiter == "space" else ""  # blanks in a row are one delimiter
+    blank = [empty] * (len(layout.time_columns) - 1)
+    units = [cell or empty for cell in units]
+    aggregations = [cell or empty for cell in aggregations]
     lines = {
         layout.names_line: line([*layout.time_columns, *names]),
-        layout.units_line: line(["", *blank, *units]),
-        layout.aggregation_line: line(["", *blank, *aggregations]),
+        layout.units_line: line([empty, *blank, *units]),
+        layout.aggregation_line: line([empty, *blank, *aggregations]),
     }
     return [lines.get(number, line([note])) for number in range(1, layout.first_data_line + 1)]
+
+
+def in_quotes(cell, layout):
+    """A cell that holds the delimiter in quotes, any other as it is.
+
+    >>> from sapflux.site.config import Layout
+    >>> in_quotes("2031-05-01 10:00", Layout(delimiter="space")), in_quotes("1.5", Layout())
+    ('"2031-05-01 10:00"', '1.5')
+    """
+    marked = layout.quote and layout.separator in cell and not cell.startswith(layout.quote)
+    return f"{layout.quote}{cell}{layout.quote}" if marked else cell
 
 
 def data_lines(layout, stamps, columns, order):

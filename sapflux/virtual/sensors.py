@@ -58,6 +58,7 @@ class RatioProbe:
     pulse_length: float = 8.0
     pulse_energy: float = 900.0  # J m-1
     window: tuple = (60.0, 100.0)  # s after the end of heating
+    spacing_upstream: float | None = None  # where it differs from `spacing`
 
 
 def needle_depths(begin, end, sapwood_depth):
@@ -160,6 +161,7 @@ def rises(probe, velocity):
     diffusivity = wood.thermal_diffusivity(probe.dry_density, probe.water_content)
     capacity = wood.volumetric_heat_capacity(probe.dry_density, probe.water_content)
     velocity = np.asarray(velocity, float)
+    upstream = -(probe.spacing if probe.spacing_upstream is None else probe.spacing_upstream)
     parts = 8
     pulses = probe.pulse_length * ((np.arange(parts) + 0.5) / parts - 1.0)  # s, end of heating is 0
     seconds = np.arange(probe.window[0], probe.window[1], 2.0) + 1.0
@@ -168,8 +170,18 @@ def rises(probe, velocity):
         for pulse in pulses:
             at = (moment - pulse, velocity, diffusivity, probe.pulse_energy / parts, capacity)
             down += heat_pulse.line_source_rise(probe.spacing, *at)
-            up += heat_pulse.line_source_rise(-probe.spacing, *at)
+            up += heat_pulse.line_source_rise(upstream, *at)
     return down / len(seconds), up / len(seconds)
+
+
+def tabulated_rises(probe, velocity, nodes=2001):
+    """`rises` by straight lines between logarithms at `nodes` velocities, for long series.
+
+    Within 1e-6 of them over a range of 100 cm h-1, far below the noise of any logger.
+    """
+    low, high = float(np.min(velocity)), float(np.max(velocity))
+    grid = np.linspace(low, high + 1e-9, nodes)
+    return tuple(np.exp(np.interp(velocity, grid, np.log(r))) for r in rises(probe, grid))
 
 
 def stored_velocity(log_ratio, diffusivity, spacing):

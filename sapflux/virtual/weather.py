@@ -1,6 +1,6 @@
 """Weather of a virtual site: a stochastic season for a latitude and a climate, SI units."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from scipy.signal import lfilter
@@ -48,6 +48,27 @@ class Climate:
     chances: tuple = ((0.50, 0.40, 0.10), (0.25, 0.50, 0.25), (0.03, 0.12, 0.85))
     rain_mean: float = 11.0  # mm of a rainy day
     wind_mean: float = 1.6  # m s-1
+
+
+def climate_at(latitude_deg, elevation_m):
+    """The default climate moved to another latitude and elevation.
+
+    The yearly mean at sea level falls from 300 K at the equator with the square of the sine of
+    latitude, through the default climate at 46 degrees and 880 m; 5.5 K less per km of elevation.
+    The yearly swing grows with the sine of latitude, its warmest day is half a year later in the
+    south. Skies and rain stay as they are. Source: own judgement, rough and plausible.
+
+    >>> round(climate_at(46.12, 880.0).yearly_mean, 2), round(climate_at(0.0, 0.0).yearly_mean)
+    (281.0, 300)
+    """
+    home, sine = Climate(), abs(np.sin(np.radians(latitude_deg)))
+    sine_home = np.sin(np.radians(46.12))
+    fall = (300.0 - home.yearly_mean - 0.0055 * 880.0) / sine_home**2
+    mean = 300.0 - fall * sine**2 - 0.0055 * elevation_m
+    swing = home.yearly_swing * sine / sine_home
+    later = 182.6 if latitude_deg < 0.0 else 0.0
+    return replace(home, yearly_mean=float(mean), yearly_swing=float(swing),
+                   warmest_day=home.warmest_day - later)  # fmt: skip
 
 
 @dataclass(frozen=True)

@@ -1,0 +1,1 @@
+"""Everything that runs the pipeline more than once: rehearsals on known truth."""

@@ -1,0 +1,69 @@
+"""The pipeline with the truth in place of what a stage made: what each step adds to the error.
+
+Steps are replaced from the front: first the baseline is the true one, then what the needles read,
+then all of heat dissipation, then the heat ratio as well, then the flow of the trees. What a
+replacement takes from the error is the contribution of the steps it covers; what is left after the
+last belongs to the stand.
+"""
+
+import numpy as np
+
+from sapflux.ingest.series import Series, on_records
+
+# What is known in each round, and the name of the steps whose error the round takes away. Needles
+# average unevenly cooled wood: no step corrects that yet, so it is told by itself.
+NEEDLES = "uneven cooling along the needles"
+ROUNDS = (
+    ("zero_flow_difference", {"zero_flow"}),
+    ("other steps of heat dissipation", {"zero_flow", "needles"}),
+    (NEEDLES, {"zero_flow", "heat_dissipation"}),
+    ("heat ratio", {"zero_flow", "heat_dissipation", "heat_ratio"}),
+    ("probe_flow and tree_flow", {"zero_flow", "heat_dissipation", "heat_ratio", "trees"}),
+)
+REST = "sapwood of the stand, gaps and totals"
+
+
+def known_truth(truth, parts):
+    """A function (chain, cube) for `compute`: the true values of those parts.
+
+    truth : a virtual site's truth; parts : of "zero_flow", "needles" (flux density as evenly
+    cooled needles would have to be to read the same), "heat_dissipation", "heat_ratio", "trees".
+    """
+
+    def known(chain, cube):
+        ends = cube["time"].values.astype("datetime64[s]")
+        interval_s = int(cube.attrs["interval_s"])
+
+        def laid(values):
+            series = Series(truth.weather.end, truth.step_s, values)
+            return on_records(series, ends, interval_s, least_share=1.0)
+
+        if chain == "scaling":
+            return _trees(truth, cube, laid) if "trees" in parts else {}
+        made = {}
+        if chain == "heat_dissipation" and "zero_flow" in parts:
+            zero = _of_points(truth, cube, laid, lambda probe: truth.zero_flow(probe)[np.newaxis])
+            made["zero_flow_difference"] = {"zero_flow_difference": zero}
+        of_probe = truth.point_flux if chain in parts else None
+        if chain == "heat_dissipation" and "needles" in parts:
+            of_probe = truth.needle_flux
+        if of_probe:
+            flux = _of_points(truth, cube, laid, of_probe)
+            made["flux_density"] = {"flux_density": flux}
+        return made
+
+    return known
+
+
+def _of_points(truth, cube, laid, of_probe):
+    values = np.full((cube.sizes["probe"], cube.sizes["point"], cube.sizes["time"]), np.nan)
+    for row, name in enumerate(cube["probe"].values):
+        for point, series in enumerate(of_probe(str(name))):
+            values[row, point] = laid(series)
+    return values
+
+
+def _trees(truth, cube, laid):
+    names = list(dict.fromkeys(cube["tree"].values.astype(str)))
+    flows = np.array([laid(truth.tree_flow(name)) for name in names])
+    return {"tree_flow": {"tree_flow": flows}}

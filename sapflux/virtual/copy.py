@@ -1,0 +1,137 @@
+"""`write_copy`: a virtual copy of any site, a complete site folder with the truth behind it."""
+
+from pathlib import Path
+
+import numpy as np
+
+from sapflux.errors import Fault, SiteError
+from sapflux.schema import SIGNALS
+from sapflux.virtual import assumptions
+from sapflux.virtual.copy_channels import common_step, plan_logs
+from sapflux.virtual.copy_files import downloads
+from sapflux.virtual.copy_forest import draw_species, draw_stems, stand_ground
+from sapflux.virtual.copy_needs import check_needs
+from sapflux.virtual.copy_probes import draw_gradients, draw_probes
+from sapflux.virtual.copy_tables import NOT_COPIED, all_tables
+from sapflux.virtual.copy_truth import VirtualTruth, draw_strata
+from sapflux.virtual.folder import config_text, csv_text
+from sapflux.virtual.weather import climate_at, soil_water, stochastic_weather
+
+__all__ = ["VirtualTruth", "grow_copy", "write_copy"]
+
+KNOWLEDGE = ("exact", "estimated")
+STORED = {signal for signals in SIGNALS.values() for signal in signals}
+
+
+def write_copy(
+    site, folder, *, seed, first_day=None, days=None, knowledge="estimated", gradients=True
+):
+    """Write a virtual copy of a site into a folder; returns its `VirtualTruth`.
+
+    The copy has the site's position, design, layouts and logs, its own weather, and downloads of
+    about a month that overlap by a day. Where the site has no logs they are invented. The same
+    seed gives the same bytes.
+
+    site : a validated `Site`; a plan without logs is enough. folder : made, or empty so far.
+    first_day : date of standard time, None for the first day of the first growing season after
+    the latest survey. days : length, None for a growing season; may span years.
+    knowledge : "exact": the tables hold the truth, with the shape of every tree with probes and
+    a core of every stem; "estimated": they hold what a crew would have measured.
+    gradients : whether stems have natural temperature gradients; without them what is left of an
+    exact copy's error is needle averaging, sap that flows at night, and noise.
+
+    SiteError: what the site lacks, all at once, or a folder that holds something. ValueError for
+    another `knowledge` or less than 2 days.
+    """
+    truth, plan = grow_copy(
+        site, seed=seed, first_day=first_day, days=days, knowledge=knowledge, gradients=gradients
+    )
+    folder = Path(folder)
+    if folder.exists() and (not folder.is_dir() or any(folder.iterdir())):
+        raise SiteError(Fault(str(folder), "something is there already", "Name a new folder."))
+    comment = (
+        f"A virtual copy of {site.position.name}, seed {seed}. Nothing here was measured.",
+        f"Knowledge of its tables: {knowledge}.",
+    )
+    text = config_text(comment, site.position, plan.layouts, plan.logs)
+    _write(folder / "site.toml", text.encode("utf-8"))
+    for name, (columns, rows) in all_tables(truth, site, plan).items():
+        _write(folder / f"{name}.csv", csv_text(columns, rows).encode("utf-8"))
+    for name, content in downloads(truth, site, plan):
+        _write(folder / name, content)
+    return truth
+
+
+def grow_copy(site, *, seed, first_day=None, days=None, knowledge="estimated", gradients=True):
+    """(`VirtualTruth`, `LogPlan`) of a virtual copy, without writing; see `write_copy`."""
+    if knowledge not in KNOWLEDGE:
+        raise ValueError(f"knowledge is {knowledge!r}; known: {', '.join(KNOWLEDGE)}")
+    check_needs(site)
+    plan = plan_logs(site)
+    first_day, days = period(site, first_day, days)
+    step_s = common_step(plan.logs)
+    position = site.position
+    climate = climate_at(position.latitude_deg, position.elevation_m)
+    weather = stochastic_weather(climate, position, str(first_day), days, step_s, seed)
+    soil = soil_water(weather, **assumptions.SOIL)
+    species = draw_species(site, seed, weather)
+    stems = draw_stems(site, seed, species)
+    strata = draw_strata(stems, species, weather, soil, lambda stand: stand_ground(site, stand))
+    tables = tuple(
+        f"table {name}: of another time than the copy's" for name in NOT_COPIED if site.table(name)
+    )
+    bare = {
+        kind for by_species in strata.values() for kind, s in by_species.items()
+        if not s.sampled.any()
+    }  # fmt: skip
+    stand_ins = {row.species: row.stand_in for row in site.table("species")}
+    natural = draw_gradients(site, seed)
+    natural = natural if gradients else dict.fromkeys(natural, 0.0)
+    truth = VirtualTruth(
+        seed=seed,
+        knowledge=knowledge,
+        weather=weather,
+        step_s=step_s,
+        dates=first_day + np.arange(days),
+        stems=tuple(one.stem for one in stems),
+        strata=strata,
+        carriers={kind: stand_ins[kind] for kind in sorted(bare) if stand_ins[kind]},
+        left_out=plan.left_out + tables,
+        species=species,
+        soil=soil,
+        probes=draw_probes(site, seed, species, natural),
+        gradients=natural,
+        stores={row.id: row.quantity for row in reversed(plan.channels) if row.quantity in STORED},
+        known={one.stem.name: one for one in stems},
+    )
+    return truth, plan
+
+
+def period(site, first_day=None, days=None):
+    """(first day, days): as given, else of the first growing season after the latest survey.
+
+    ValueError for less than 2 days.
+    """
+    half = "south" if site.position.latitude_deg < 0.0 else "north"
+    begin, end = assumptions.SEASONS[half]
+    if first_day is None:
+        dates = [row.date for row in site.table("surveys")]
+        latest = np.datetime64(max(dates), "D")
+        year = latest.astype("datetime64[Y]")
+        first = np.datetime64(f"{year}-{begin}", "D")
+        first_day = first if first > latest else np.datetime64(f"{year + 1}-{begin}", "D")
+    first_day = np.datetime64(first_day, "D")
+    if days is None:
+        year = int(str(first_day)[:4])
+        last = np.datetime64(f"{year}-{end}", "D")
+        if last <= first_day:
+            last = np.datetime64(f"{year + 1}-{end}", "D")
+        days = int((last - first_day) / np.timedelta64(1, "D"))
+    if days < 2:
+        raise ValueError(f"days is {days}; a copy has at least 2")
+    return first_day, days
+
+
+def _write(path, content):
+    path.parent.mkdir(parents=True, exist_ok=True)
+    path.write_bytes(content)

@@ -1,0 +1,111 @@
+"""Downloads of a virtual copy: every log printed in its layout, cut into files that overlap."""
+
+import numpy as np
+
+from sapflux.virtual import assumptions, loggers
+from sapflux.virtual.copy_values import decimals, log_values
+
+ROWS_AT_ONCE = 4000  # bounds the memory of numbers on their way to text
+DAY = np.timedelta64(86400, "s")
+SHORTEST = 10  # days; a last download of fewer is joined to the one before
+
+
+def downloads(truth, site, plan):
+    """(path below the site folder, bytes) of every file, log by log."""
+    stamps = {}
+    for name, log in plan.logs.items():
+        layout = plan.layouts[log.layout]
+        channels = [row for row in plan.channels if row.log == name]
+        every = round(log.interval_min * 60) // truth.step_s
+        end = truth.weather.end[every - 1 :: every]
+        values = log_values(truth, site, channels, every)
+        key = (log.clock, log.stamp, log.interval_min, log.layout)
+        if key not in stamps:
+            stamps[key] = _stamps(end, log, layout)
+        lines = _lines(values, stamps[key], channels, layout)
+        per_record = len(channels) if layout.long else 1
+        header = _header(name, channels, layout)
+        folder, _, suffix = log.files[0].partition("*")
+        for first, last in spans(truth.weather.end[0] - truth.step_s, end[-1]):
+            rows = np.flatnonzero((end > first) & (end <= last))
+            data = lines[rows[0] * per_record : (rows[-1] + 1) * per_record]
+            day = site.standard(last).astype("datetime64[D]")
+            text = "\n".join([*header, *data]) + "\n"
+            yield f"{folder}{folder.split('/')[-2]}_{day}{suffix}", text.encode(layout.encoding)
+
+
+def spans(begin, end):
+    """(first, last) moment of each download, each overlapping the one before.
+
+    >>> [str(a)[:10] for a, _ in spans(np.datetime64("2031-05-01", "s"),
+    ...                                np.datetime64("2031-07-05", "s"))]
+    ['2031-05-01', '2031-05-30']
+    """
+    month = assumptions.DAYS_OF_DOWNLOAD * DAY
+    cuts = [begin]
+    while cuts[-1] + month + SHORTEST * DAY <= end:
+        cuts.append(cuts[-1] + month)
+    cuts = cuts if cuts[-1] < end else cuts[:-1]
+    first = [begin, *(cut - assumptions.DAYS_OF_OVERLAP * DAY for cut in cuts[1:])]
+    return list(zip(first, [*cuts[1:], end], strict=True))
+
+
+def _stamps(end, log, layout):
+    times = loggers.clock_times(end, log, zoned="%z" in layout.time_format)
+    cells = loggers.stamp_cells(times, layout)
+    return [layout.separator.join(loggers.in_quotes(c, layout) for c in row) for row in cells]
+
+
+def _header(log, channels, layout):
+    note = f"{layout.comment}logger {log}"
+    if layout.long:
+        labels = layout.long.name_columns
+        names, blank = [*labels, layout.long.value_column], [""] * (len(labels) + 1)
+        return loggers.header_lines(layout, names, blank, blank, note)
+    names, written = [row.column for row in channels], [row.unit for row in channels]
+    return loggers.header_lines(layout, names, written, [""] * len(names), note)
+
+
+def _lines(values, stamps, channels, layout):
+    """Data lines of all records: one a record, or of a long table one a record and channel."""
+    places = [decimals(row.quantity, row.unit) for row in channels]
+    for column, count in enumerate(places):
+        # Adding zero takes the minus off a number that is rounded to zero.
+        values[:, column] = np.round(values[:, column], count) + 0.0
+    missing = f"{layout.missing_numbers[0]:g}" if layout.missing_numbers else next(
+        (text for text in layout.missing_text if text), "NAN"
+    )  # fmt: skip
+    forms = [f"%.{count}f" for count in places]
+    separator = layout.separator
+    # Cells are joined by blanks first, which no number holds, so that a decimal comma can be set.
+    form, lines = " ".join(forms), []
+    labels = _labels(channels, layout) if layout.long else ()
+    for first in range(0, len(values), ROWS_AT_ONCE):
+        block = values[first : first + ROWS_AT_ONCE]
+        texts = "\n".join([form % tuple(row) for row in block.tolist()])
+        if layout.decimal != ".":
+            texts = texts.replace(".", layout.decimal)
+        if np.isnan(block).any():
+            texts = texts.replace("nan", missing)
+        if not layout.long:
+            texts = texts.replace(" ", separator).split("\n")
+            here = stamps[first : first + ROWS_AT_ONCE]
+            lines += [f"{s}{separator}{text}" for s, text in zip(here, texts, strict=True)]
+            continue
+        for stamp, text in zip(
+            stamps[first : first + ROWS_AT_ONCE], texts.split("\n"), strict=True
+        ):
+            cells = zip(labels, text.split(" "), strict=True)
+            lines += [f"{stamp}{separator}{label}{separator}{cell}" for label, cell in cells]
+    return lines
+
+
+def _labels(channels, layout):
+    """The name cells of each channel of a long table, joined."""
+    count = len(layout.long.name_columns)
+    return [
+        layout.separator.join(
+            loggers.in_quotes(cell, layout) for cell in row.column.split("/", count - 1)
+        )
+        for row in channels
+    ]
