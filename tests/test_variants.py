@@ -7,9 +7,11 @@ import numpy as np
 import pytest
 
 from sapflux import quality, run_site
+from sapflux.cli import main
 from sapflux.errors import DataError, SiteError
 from sapflux.pipeline.api import summary
 from sapflux.pipeline.check import check_site
+from sapflux.pipeline.recipe import find_recipe
 
 SITE = Path(__file__).parents[1] / "configs" / "orvelin"
 
@@ -244,3 +246,26 @@ def test_a_column_in_the_wrong_unit_empties_the_totals_and_the_reason_is_told(si
     )
     (told,) = summary(run)["refused"]
     assert told.startswith("upper: 70 days refused, most often because: no instrumented tree has")
+
+
+@pytest.mark.parametrize("last", ["join", "probe_flow", "tree_flow", "stand_transpiration"])
+def test_a_recipe_may_end_at_any_level(last, tmp_path, capsys):
+    text = find_recipe("stand_water_use").read_text(encoding="utf-8")
+    head, _, rest = text.partition("# From flux density to trees")
+    scaling, _, totals = rest.partition("# When a period")
+    blocks = scaling.split("[[scaling]]")[1:]
+    names = [block.split('"')[1] for block in blocks]
+    kept = blocks[: names.index(last) + 1] if last != "join" else []
+    recipe = tmp_path / "mine.toml"
+    recipe.write_text(head + "".join(f"[[scaling]]{b}" for b in kept) + "# When" + totals)
+    assert main(["run", str(SITE), "--recipe", str(recipe), "--out", str(tmp_path / "out")]) == 0
+    told = capsys.readouterr().out
+    assert ("Season totals" in told) == (last == "stand_transpiration")
+    written = {path.stem for path in (tmp_path / "out" / "orvelin").glob("*.nc")}
+    levels = {
+        "join": set(),
+        "probe_flow": set(),
+        "tree_flow": {"trees"},
+        "stand_transpiration": {"trees", "stand"},
+    }
+    assert written == {"probes", "origin"} | levels[last]

@@ -94,7 +94,23 @@ def _print(outcome, several, options):
     ledger = found["ledger"]
     classes = ", ".join(f"{number:,} {name}" for name, number in ledger.items() if name != "lines")
     print(f"  {count(found['files'], 'file')}, {count(ledger['lines'], 'line')}: {classes}")
-    print("\n  Season totals, over the days that may be totalled")
+    print()
+    if found["season"]:
+        _print_season(found["season"])
+    for text in [*found["refused"], *found["notes"]]:
+        print(note(text))
+    print(f"\n  Written to {found['folder']} ({found['seconds']:.1f} s), run {found['identity']}:")
+    for line in columns([[name, what] for name, what in found["written"]], ["", ""])[1:]:
+        print(f"    {line}")
+    if not several:
+        print()
+        for line in CAUTIONS:
+            print(f"  {line}")
+    print()
+
+
+def _print_season(season):
+    print("  Season totals, over the days that may be totalled")
     rows = [
         [
             row["stand"],
@@ -106,21 +122,11 @@ def _print(outcome, several, options):
             share(row["filled_fraction"]),
             row["reason"],
         ]
-        for row in found["season"]
+        for row in season
     ]
     header = ["stand", "species", "mm", "days", "refused", "measured", "filled", ""]
     for line in columns(rows, header, right=header[2:7]):
         print(f"  {line}")
-    print()
-    for text in [*found["refused"], *found["notes"]]:
-        print(note(text))
-    print(f"\n  Written to {found['folder']} ({found['seconds']:.1f} s), run {found['identity']}:")
-    for line in columns([[name, what] for name, what in found["written"]], ["", ""])[1:]:
-        print(f"    {line}")
-    if not several:
-        print()
-        for line in CAUTIONS:
-            print(f"  {line}")
     print()
 
 

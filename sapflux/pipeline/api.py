@@ -105,19 +105,17 @@ def run_site(
 
 def summary(run):
     """What a person wants to know first of a run, as plain data."""
-    season = run.table("season")
     ledger = run.table("ledger")
     classes = ledger.drop(columns=["file", "sha256"]).sum()
-    daily = run.table("daily")
+    scaled = (run.folder / "season.csv").is_file()  # a recipe may end before the stand
     return {
         "site": run.record["site"]["name"],
         "recipe": run.record["recipe"]["name"],
-        "from": str(daily["start"].min()),
-        "to": str(daily["end"].max()),
+        **run.record["span"],
         "files": len(ledger),
         "ledger": {name: int(number) for name, number in classes.items()},
-        "season": season.to_dict("records"),
-        "refused": [*refused_days(daily)],
+        "season": run.table("season").to_dict("records") if scaled else [],
+        "refused": [*refused_days(run.table("daily"))] if scaled else [],
         "notes": run.record["notes"],
         "folder": str(run.folder),
         "identity": run.record["identity"],

@@ -106,6 +106,13 @@ def _samples(series):
     return end, series.interval_s, names[file], line
 
 
+def _span(site, found):
+    """First and last day of the records, standard time, the last exclusive."""
+    ends = found.probes["time"].values.astype("datetime64[s]")
+    days = site.day_of(ends[[0, -1]])
+    return {"from": str(days[0]), "to": str(days[1] + 1)}
+
+
 def _record(site, recipe, found, identity_of_run, folder):
     position = site.position.model_dump()
     written = {path.name for path in folder.iterdir()} | {"run.json", "timings.json"}
@@ -114,6 +121,7 @@ def _record(site, recipe, found, identity_of_run, folder):
         "version": sapflux.__version__,
         "identity": identity_of_run,
         "site": position,
+        "span": _span(site, found),
         "recipe": recipe.resolved(),
         "history": found.history,
         "inputs": input_hashes(found),

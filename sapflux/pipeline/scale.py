@@ -51,8 +51,10 @@ def scale(site, recipe, probes, weather, block_days, known=None):
     )
     tables = fitted_tables(chain, block_days)
     parts = {}
-    for block, working in run_blocks(chain, tables, block_days, ("in_leaf", "installation")):
-        names = {name for step in steps for name in step.stage.makes} | {"in_leaf", "installation"}
+    made = {name for step in steps for name in step.stage.makes}
+    also = ("installation", "in_leaf") if "stand_transpiration" in made else ("installation",)
+    names = made | set(also)
+    for block, working in run_blocks(chain, tables, block_days, also):
         for name in sorted(names & working.variables.keys()):
             value = working.variables[name]
             parts.setdefault(name, []).append(value.isel(time=block.core))
