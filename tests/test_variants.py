@@ -269,3 +269,15 @@ def test_a_recipe_may_end_at_any_level(last, tmp_path, capsys):
         "stand_transpiration": {"trees", "stand"},
     }
     assert written == {"probes", "origin"} | levels[last]
+
+
+def test_a_clock_that_fell_back_to_its_epoch_stretches_nothing_and_is_told(site, tmp_path):
+    path = site / "raw" / "upper_2031-09-18.dat"
+    lines = path.read_text(encoding="utf-8").splitlines(keepends=True)
+    lost = [line.replace('"2031-09-', '"1990-01-', 1) for line in lines[1000:1100]]
+    path.write_text("".join([*lines[:1000], *lost, *lines[1100:]]), encoding="utf-8")
+    run = run_site(site, out=tmp_path / "out")
+    assert str(run.probes["time"].values[0]) > "2031"
+    assert "100 records of log 'upper' lie outside the installations of its probes" in " ".join(
+        run.record["notes"]
+    )

@@ -133,6 +133,20 @@ def parser():
         default="estimated",
         help="what the copy's tables know of the truth; default: estimated",
     )
+    rehearse.add_argument(
+        "--wound",
+        choices=("cubic", "strip"),
+        default="cubic",
+        help="true wound: the inverse of the published cubic, or a strip in "
+        "does not conduct, solved numerically; default: cubic",
+    )
+    rehearse.add_argument(
+        "--faults",
+        choices=("none", "few", "many"),
+        default="none",
+        help="faults of probes, loggers and files to inject; default: none",
+    )
+    rehearse.add_argument("--azimuth", action="store_true", help="let flux differ around each stem")
     rehearse.add_argument("--out", metavar="DIR", default="rehearsals", help="default: rehearsals")
     rehearse.add_argument("--json", action="store_true", help="print JSON alone")
     rehearse.set_defaults(command=_rehearse)

@@ -3,7 +3,7 @@
 from pathlib import Path
 
 from sapflux.cli import DONE
-from sapflux.cli.text import columns, note, print_json
+from sapflux.cli.text import columns, count, note, print_json
 from sapflux.study.rehearsal import rehearse as rehearsed
 from sapflux.study.rehearsal_files import as_data, spread, write_reports
 
@@ -17,13 +17,20 @@ def rehearse(options):
         years=options.years,
         recipe=options.recipe,
         knowledge=options.knowledge,
+        wound=options.wound,
+        azimuth=options.azimuth,
+        faults=options.faults,
     )
     paths = write_reports(found)
     if options.json:
         print_json(as_data(found))
         return DONE
     print(f"{options.site}: a virtual copy, seed {found.seed}, knowledge {found.knowledge}, recipe "
-          f"{found.recipe}\n")  # fmt: skip
+          f"{found.recipe}")  # fmt: skip
+    model = ", ".join(f"{name} {value}" for name, value in found.options.items())
+    print(f"  true: {model}")
+    kinds = found.faults["kind"].nunique()
+    print(f"  faults injected: {len(found.faults)}, of {count(kinds, 'kind')}\n")
     _print_stands(found)
     _print_steps(found)
     for name, table in [("tree", found.trees), ("probe", found.probes)]:

@@ -7,7 +7,7 @@ from sapflux import quality, schema
 from sapflux.errors import DataError, Fault
 from sapflux.ingest.channels import excluded, single_series, values_of, within
 from sapflux.ingest.series import grid, on_records, place
-from sapflux.site.installations import installation_numbers
+from sapflux.site.installations import installation_numbers, installed_span
 
 METHODS = ("heat_dissipation", "heat_ratio")  # unheated pairs serve these, and have no chain
 
@@ -72,11 +72,7 @@ def _cube(site, logs, key, channels):
     used = {channel.id for channel in channels}
     probes = [name for name in probe_names(site, method) if name in used]
     points = max(channel.point for channel in channels)
-    spans = [logs[channel.log].end for channel in channels if len(logs[channel.log].end)]
-    if spans:
-        time = grid(min(s[0] for s in spans), max(s[-1] for s in spans), interval_s)
-    else:
-        time = np.empty(0, dtype="datetime64[s]")
+    time = _axis(site, logs, channels, probes, interval_s)
     shape = (len(probes), points, len(time))
     signals = {c.quantity: np.full(shape, np.nan) for c in channels}
     expected = np.zeros(shape, dtype=bool)
@@ -86,9 +82,11 @@ def _cube(site, logs, key, channels):
     for channel in channels:
         series = logs[channel.log]
         rows, values, withheld = values_of(channel, series, site)
-        if not len(rows):
+        if not len(rows) or not len(time):
             continue
-        at = place(series.end[rows], time[0], interval_s)
+        on_axis = (series.end[rows] >= time[0]) & (series.end[rows] <= time[-1])
+        values, withheld = values[on_axis], withheld[on_axis]
+        at = place(series.end[rows[on_axis]], time[0], interval_s)
         where = (probes.index(channel.id), channel.point - 1, at)
         row = schema.QUANTITIES[channel.quantity]
         signals[channel.quantity][where] = values
@@ -115,6 +113,20 @@ def _cube(site, logs, key, channels):
         "time": time.astype("datetime64[ns]"),
     }
     return xr.Dataset(variables, coords, attrs={"method": method, "interval_s": interval_s})
+
+
+def _axis(site, logs, channels, probes, interval_s):
+    """Ends of the records of a cube, from its first to its last, but none outside installations.
+
+    A clock that fell back to its epoch would else stretch the cube over decades of nothing.
+    """
+    ends = [logs[name].end for name in {channel.log for channel in channels}]
+    first, last = installed_span(site, probes)
+    inside = [end[(end > first) & (end <= last)] for end in ends]
+    inside = [end for end in inside if len(end)]
+    if not inside:
+        return np.empty(0, dtype="datetime64[s]")
+    return grid(min(end[0] for end in inside), max(end[-1] for end in inside), interval_s)
 
 
 def answered_records(site, logs, cube):

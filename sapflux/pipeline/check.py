@@ -8,6 +8,7 @@ from sapflux.ingest.reasons import commonest
 from sapflux.pipeline.notes import notes_of
 from sapflux.pipeline.plan import methods_of, plan_faults
 from sapflux.pipeline.recipe import load_recipe
+from sapflux.site.installations import installed_span
 from sapflux.site.inventory import composition
 from sapflux.site.load import load_site
 
@@ -129,6 +130,25 @@ def silent_logs(site, logs):
             right = "Correct from and to in channels.csv, or 'clock' and 'time_format' of the log."
         faults.append(Fault(where, f"log {name!r} gives no record: {what}", right))
     return faults
+
+
+def uninstalled_notes(site, logs):
+    """Notes on logs with records from outside all installations of the probes they carry."""
+    notes = []
+    for name, series in logs.items():
+        carried = {c.id for c in site.table("channels") if c.kind == "probe" and c.log == name}
+        if not carried or not len(series.end):
+            continue
+        first, last = installed_span(site, carried)
+        outside = (series.end <= first) | (series.end > last)
+        if outside.any():
+            begin = str(series.end[outside][0]).replace("T", " ")
+            notes.append(
+                f"{int(outside.sum())} records of log {name!r} lie outside the installations of "
+                f"its probes, the first at {begin} UTC: is its clock right, are the dates in "
+                "probes.csv?"
+            )
+    return notes
 
 
 def displaced_notes(site, logs):

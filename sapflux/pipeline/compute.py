@@ -18,6 +18,7 @@ from sapflux.pipeline.check import (
     rejection_notes,
     silent_logs,
     unheard_channels,
+    uninstalled_notes,
 )
 from sapflux.pipeline.execute import BLOCK_DAYS, Chain, fitted_tables, run_blocks
 from sapflux.pipeline.installation_lives import FlagCounts, installation_table
@@ -116,6 +117,7 @@ def _read_logs(site):
     logs = {name: read_log(site, name) for name in site.logs}
     notes += [str(fault) for fault in silent_logs(site, logs)]
     notes += [*unheard_channels(site, logs), *displaced_notes(site, logs)]
+    notes += uninstalled_notes(site, logs)
     return logs, notes + rejection_notes(site, logs)
 
 

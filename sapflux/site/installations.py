@@ -13,6 +13,15 @@ def episodes(site, probe):
     return sorted(rows, key=lambda row: row.installed)
 
 
+def installed_span(site, probes):
+    """(first installation, last removal) of these probes, datetime64[s] UTC; no end: year 9999."""
+    rows = [row for row in site.table("probes") if row.probe in set(probes)]
+    never = np.datetime64("9999-01-01", "s")
+    begins = [site.utc(row.installed) for row in rows]
+    ends = [site.utc(row.removed, never) for row in rows]
+    return min(begins, default=never), max(ends, default=never)
+
+
 def latest_begun(site, probes, times_end, interval_s):
     """Number of the installation that began last before each record, (probe, time) int16.
 

@@ -15,6 +15,7 @@ from sapflux.scaling.whole_stands import ALL
 from sapflux.site.load import load_site
 from sapflux.study.substitution import REST, ROUNDS, known_truth
 from sapflux.virtual.copy import write_copy
+from sapflux.virtual.faults import fault_table
 from sapflux.virtual.truth import stand_design, stand_mm
 
 DAYS_A_YEAR = 365
@@ -39,16 +40,19 @@ class Rehearsal:
     probes: pd.DataFrame
     steps: pd.DataFrame
     left_out: tuple
+    options: dict  # how the forward model made the truth
+    faults: pd.DataFrame  # every fault injected: kind, log, name, begin, end, size, ...
 
 
 def rehearse(path, out, *, seed=1, years=None, days=None, recipe="stand_water_use",
-             knowledge="estimated", gradients=True):  # fmt: skip
+             knowledge="estimated", **options):  # fmt: skip
     """Write a virtual copy of a site, run the pipeline on it, and compare with its truth.
 
     path : site folder, a plan without logs is enough; out : folder for the copy, its run and the
     reports; seed : of all that is drawn; years : length, None is one growing season; days : the
-    same in days; knowledge : "estimated", what a crew would know, or "exact"; gradients : whether
-    stems have natural temperature gradients. A former rehearsal of the same seed is replaced.
+    same in days; knowledge : "estimated", what a crew would know, or "exact"; options : of the
+    forward model, see `sapflux.virtual.copy.write_copy` (faults, wound, azimuth, weather, ...). A
+    former rehearsal of the same seed is replaced.
 
     Raises what loading, checking and running a site raise.
     """
@@ -58,7 +62,7 @@ def rehearse(path, out, *, seed=1, years=None, days=None, recipe="stand_water_us
     if (folder / REPORT).is_file():
         shutil.rmtree(folder)
     truth = write_copy(site, folder / site.key, seed=seed, days=length, knowledge=knowledge,
-                       gradients=gradients)  # fmt: skip
+                       **options)  # fmt: skip
     run = run_site(folder / site.key, recipe=recipe, out=folder / "run")
     copy, chosen = load_site(folder / site.key), load_recipe(recipe)
     check_plan(copy, chosen)
@@ -75,7 +79,15 @@ def rehearse(path, out, *, seed=1, years=None, days=None, recipe="stand_water_us
         probe_errors(truth, first.probes, copy.position.common_step_min * 60),
         step_errors(truth, copy, chosen, first),
         truth.left_out,
+        truth.options,
+        fault_frame(truth),
     )
+
+
+def fault_frame(truth):
+    """The truth table of the faults injected, as text."""
+    columns, rows = fault_table(truth)
+    return pd.DataFrame(rows, columns=columns)
 
 
 def stand_errors(truth, daily):

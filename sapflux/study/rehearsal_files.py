@@ -13,11 +13,18 @@ COLUMNS = (
 
 
 def write_reports(found):
-    """Write both reports beside the virtual site and return their paths."""
+    """Write the reports beside the virtual site and return their paths.
+
+    With faults, `faults.csv` is the truth table of all that were injected.
+    """
     json, csv = found.folder / REPORT, found.folder / "rehearsal.csv"
     write_json(as_data(found), json)
     rows(found).to_csv(csv, index=False, float_format="%.5f", lineterminator="\n")
-    return [json, csv]
+    if not len(found.faults):
+        return [json, csv]
+    faults = found.folder / "faults.csv"
+    found.faults.to_csv(faults, index=False, lineterminator="\n")
+    return [json, csv, faults]
 
 
 def as_data(found):
@@ -28,11 +35,13 @@ def as_data(found):
         "seed": found.seed,
         "knowledge": found.knowledge,
         "recipe": found.recipe,
+        "forward_model": found.options,
         "run": found.identity,
         "stands": found.stands.to_dict("records"),
         "steps": found.steps.to_dict("records"),
         "trees": spread(found.trees) | {"each": found.trees.to_dict("records")},
         "probes": spread(found.probes) | {"each": found.probes.to_dict("records")},
+        "faults": found.faults["kind"].value_counts().sort_index().to_dict(),
         "left_out": list(found.left_out),
     })  # fmt: skip
 

@@ -18,7 +18,10 @@ ROUNDS = (
     ("other steps of heat dissipation", {"zero_flow", "needles"}),
     (NEEDLES, {"zero_flow", "heat_dissipation"}),
     ("heat ratio", {"zero_flow", "heat_dissipation", "heat_ratio"}),
-    ("probe_flow and tree_flow", {"zero_flow", "heat_dissipation", "heat_ratio", "trees"}),
+    (
+        "probe_flow and tree_flow, faces of the trees",
+        {"zero_flow", "heat_dissipation", "heat_ratio", "trees"},
+    ),
 )
 REST = "sapwood of the stand, gaps and totals"
 

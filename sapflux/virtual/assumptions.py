@@ -42,6 +42,7 @@ LARGEST_TILT = 0.6  # beyond it a shape could turn negative
 DEFICIT_SPREAD = 0.08  # of ln deficit scale
 ALLOMETRY_SPREAD = 0.08  # of ln sapwood area about the species' allometry
 CORE_SPREAD = 0.03  # of ln sapwood depth about what the site's cores say
+AZIMUTH_AMPLITUDE = (0.0, 0.25)  # 1, of the cosine of flux density around a stem, if it has one
 BARK_SPREAD = 0.06  # of ln bark thickness where the site does not know it
 ALLOMETRY_EXPONENT = 1.8  # of the diameter, where the site has cores and no allometry
 DEEPEST_SAPWOOD, SHALLOWEST_SAPWOOD = 0.95, 0.02  # of the radius under bark

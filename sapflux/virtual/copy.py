@@ -1,5 +1,6 @@
 """`write_copy`: a virtual copy of any site, a complete site folder with the truth behind it."""
 
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -14,18 +15,23 @@ from sapflux.virtual.copy_needs import check_needs
 from sapflux.virtual.copy_probes import draw_gradients, draw_probes
 from sapflux.virtual.copy_tables import NOT_COPIED, all_tables
 from sapflux.virtual.copy_truth import VirtualTruth, draw_strata
+from sapflux.virtual.faults_draw import check_level, draw_faults
+from sapflux.virtual.faults_tree import with_deaths
 from sapflux.virtual.folder import config_text, csv_text
+from sapflux.virtual.given import whole_days
 from sapflux.virtual.weather import climate_at, soil_water, stochastic_weather
 
 __all__ = ["VirtualTruth", "grow_copy", "write_copy"]
 
 KNOWLEDGE = ("exact", "estimated")
+WOUNDS = ("cubic", "strip")
 STORED = {signal for signals in SIGNALS.values() for signal in signals}
 
 
 def write_copy(
-    site, folder, *, seed, first_day=None, days=None, knowledge="estimated", gradients=True
-):
+    site, folder, *, seed, first_day=None, days=None, knowledge="estimated", gradients=True,
+    weather=None, wound="cubic", azimuth=False, faults="none",
+):  # fmt: skip
     """Write a virtual copy of a site into a folder; returns its `VirtualTruth`.
 
     The copy has the site's position, design, layouts and logs, its own weather, and downloads of
@@ -39,13 +45,23 @@ def write_copy(
     a core of every stem; "estimated": they hold what a crew would have measured.
     gradients : whether stems have natural temperature gradients; without them what is left of an
     exact copy's error is needle averaging, sap that flows at night, and noise.
+    weather : `Weather` such as of `given.given_weather`, on a step that all logs' intervals are
+    whole multiples of; its whole days are the period, without `first_day` and `days`. None for a
+    stochastic season of the site's place.
+    wound : what slows the heat pulses, "cubic": the published correction, inverted numerically;
+    "strip": a strip without flow, by finite volumes.
+    azimuth : whether flux density differs around a stem, by a cosine drawn for each.
+
+    faults : "none"; "few", what a well kept site sees; "many", every kind that `faults.KINDS`
+    has a place for. They are in `faults` of the truth and nowhere in the folder.
 
     SiteError: what the site lacks, all at once, or a folder that holds something. ValueError for
-    another `knowledge` or less than 2 days.
+    another `knowledge`, `wound` or `faults`, less than 2 days, or weather that does not fit.
     """
     truth, plan = grow_copy(
-        site, seed=seed, first_day=first_day, days=days, knowledge=knowledge, gradients=gradients
-    )
+        site, seed=seed, first_day=first_day, days=days, knowledge=knowledge, gradients=gradients,
+        weather=weather, wound=wound, azimuth=azimuth, faults=faults,
+    )  # fmt: skip
     folder = Path(folder)
     if folder.exists() and (not folder.is_dir() or any(folder.iterdir())):
         raise SiteError(Fault(str(folder), "something is there already", "Name a new folder."))
@@ -62,20 +78,30 @@ def write_copy(
     return truth
 
 
-def grow_copy(site, *, seed, first_day=None, days=None, knowledge="estimated", gradients=True):
+def grow_copy(
+    site, *, seed, first_day=None, days=None, knowledge="estimated", gradients=True, weather=None,
+    wound="cubic", azimuth=False, faults="none",
+):  # fmt: skip
     """(`VirtualTruth`, `LogPlan`) of a virtual copy, without writing; see `write_copy`."""
     if knowledge not in KNOWLEDGE:
         raise ValueError(f"knowledge is {knowledge!r}; known: {', '.join(KNOWLEDGE)}")
+    if wound not in WOUNDS:
+        raise ValueError(f"wound is {wound!r}; known: {', '.join(WOUNDS)}")
+    check_level(faults)
     check_needs(site)
     plan = plan_logs(site)
-    first_day, days = period(site, first_day, days)
-    step_s = common_step(plan.logs)
-    position = site.position
-    climate = climate_at(position.latitude_deg, position.elevation_m)
-    weather = stochastic_weather(climate, position, str(first_day), days, step_s, seed)
+    given = weather is not None
+    if given:
+        weather, first_day, days = _given_period(site, plan, weather, first_day, days)
+    else:
+        first_day, days = period(site, first_day, days)
+        position = site.position
+        climate = climate_at(position.latitude_deg, position.elevation_m)
+        step_s = common_step(plan.logs)
+        weather = stochastic_weather(climate, position, str(first_day), days, step_s, seed)
     soil = soil_water(weather, **assumptions.SOIL)
     species = draw_species(site, seed, weather)
-    stems = draw_stems(site, seed, species)
+    stems = draw_stems(site, seed, species, azimuth)
     strata = draw_strata(stems, species, weather, soil, lambda stand: stand_ground(site, stand))
     tables = tuple(
         f"table {name}: of another time than the copy's" for name in NOT_COPIED if site.table(name)
@@ -87,24 +113,34 @@ def grow_copy(site, *, seed, first_day=None, days=None, knowledge="estimated", g
     stand_ins = {row.species: row.stand_in for row in site.table("species")}
     natural = draw_gradients(site, seed)
     natural = natural if gradients else dict.fromkeys(natural, 0.0)
+    known = {one.stem.name: one for one in stems}
+    options = {
+        "wound": wound,
+        "azimuth": azimuth,
+        "gradients": gradients,
+        "night_cooling": assumptions.NIGHT_COOLING,
+        "weather": "given" if given else "stochastic",
+    }
     truth = VirtualTruth(
         seed=seed,
         knowledge=knowledge,
         weather=weather,
-        step_s=step_s,
+        step_s=weather.step_s,
         dates=first_day + np.arange(days),
         stems=tuple(one.stem for one in stems),
         strata=strata,
         carriers={kind: stand_ins[kind] for kind in sorted(bare) if stand_ins[kind]},
         left_out=plan.left_out + tables,
+        options=options,
         species=species,
         soil=soil,
-        probes=draw_probes(site, seed, species, natural),
+        probes=draw_probes(site, seed, species, natural, known, wound),
         gradients=natural,
         stores={row.id: row.quantity for row in reversed(plan.channels) if row.quantity in STORED},
-        known={one.stem.name: one for one in stems},
+        known=known,
     )
-    return truth, plan
+    truth = replace(truth, faults=draw_faults(truth, site, plan, faults))
+    return with_deaths(truth), plan
 
 
 def period(site, first_day=None, days=None):
@@ -130,6 +166,19 @@ def period(site, first_day=None, days=None):
     if days < 2:
         raise ValueError(f"days is {days}; a copy has at least 2")
     return first_day, days
+
+
+def _given_period(site, plan, weather, first_day, days):
+    """(whole days of the given weather, first day, days); ValueError where it does not fit."""
+    if first_day is not None or days is not None:
+        raise ValueError("the period follows from the weather; give no first_day and no days")
+    intervals = sorted({round(log.interval_min * 60) for log in plan.logs.values()})
+    if any(interval % weather.step_s for interval in intervals):
+        raise ValueError(
+            f"the weather has steps of {weather.step_s} s; the logs' intervals of "
+            f"{', '.join(map(str, intervals))} s are to be whole multiples of it"
+        )
+    return whole_days(weather, site.position.utc_offset_h)
 
 
 def _write(path, content):

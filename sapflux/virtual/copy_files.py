@@ -1,8 +1,10 @@
 """Downloads of a virtual copy: every log printed in its layout, cut into files that overlap."""
 
+from functools import partial
+
 import numpy as np
 
-from sapflux.virtual import assumptions, loggers
+from sapflux.virtual import assumptions, faults, faults_clock, faults_files, loggers
 from sapflux.virtual.copy_values import decimals, log_values
 
 ROWS_AT_ONCE = 4000  # bounds the memory of numbers on their way to text
@@ -19,19 +21,44 @@ def downloads(truth, site, plan):
         every = round(log.interval_min * 60) // truth.step_s
         end = truth.weather.end[every - 1 :: every]
         values = log_values(truth, site, channels, every)
-        key = (log.clock, log.stamp, log.interval_min, log.layout)
+        mine = faults.of_log(truth, name)
+        values = faults.spoiled_values(truth, site, plan, name, every, values)
+        shown = faults_clock.shown_end(end, log, mine)
+        key = (log.clock, log.stamp, log.interval_min, log.layout, shown.tobytes())
         if key not in stamps:
-            stamps[key] = _stamps(end, log, layout)
-        lines = _lines(values, stamps[key], channels, layout)
+            stamps[key] = _stamps(shown, log, layout)
+        made = stamps[key]
+        lines = _lines(values, made, channels, layout)
         per_record = len(channels) if layout.long else 1
         header = _header(name, channels, layout)
-        folder, _, suffix = log.files[0].partition("*")
+        blank, ends = np.full(len(header), np.datetime64("NaT"), end.dtype), end.repeat(per_record)
+        files = []
         for first, last in spans(truth.weather.end[0] - truth.step_s, end[-1]):
-            rows = np.flatnonzero((end > first) & (end <= last))
-            data = lines[rows[0] * per_record : (rows[-1] + 1) * per_record]
-            day = site.standard(last).astype("datetime64[D]")
-            text = "\n".join([*header, *data]) + "\n"
-            yield f"{folder}{folder.split('/')[-2]}_{day}{suffix}", text.encode(layout.encoding)
+            rows = np.flatnonzero((ends > first) & (ends <= last))
+            data = lines[rows[0] : rows[-1] + 1]
+            path = download_path(log, site.standard(last))
+            files.append(
+                faults_files.Download(path, [*header, *data], np.append(blank, ends[rows]))
+            )
+        reordered = partial(_reordered, name, values, made, channels, layout)
+        context = faults_files.Context(truth.seed, layout, len(header), end, reordered)
+        for file in faults_files.spoiled(files, mine, context):
+            yield file.path, file.content(layout.encoding)
+
+
+def _reordered(log, values, stamps, channels, layout, rng):
+    """(header, data lines) of all records with the columns in another order."""
+    order = rng.permutation(len(channels))
+    if (order == np.arange(len(channels))).all():
+        order = order[::-1]
+    moved = [channels[at] for at in order]
+    return _header(log, moved, layout), _lines(values[:, order], stamps, moved, layout)
+
+
+def download_path(log, last):
+    """Path below the site folder of the download of a log that ends at `last` (standard time)."""
+    folder, _, suffix = log.files[0].partition("*")
+    return f"{folder}{folder.split('/')[-2]}_{last.astype('datetime64[D]')}{suffix}"
 
 
 def spans(begin, end):

@@ -1,7 +1,7 @@
 """Stems and species of a virtual copy, drawn about what the site says of them."""
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -70,8 +70,11 @@ def draw_species(site, seed, weather):
     return drawn
 
 
-def draw_stems(site, seed, species):
-    """`StemTruth` of every living stem of the latest surveys and of each tree with probes."""
+def draw_stems(site, seed, species, azimuth=False):
+    """`StemTruth` of every living stem of the latest surveys and of each tree with probes.
+
+    azimuth : whether the flux density of stems differs around them.
+    """
     carrying = {row.tree for row in site.table("probes") if row.method in SAP_FLOW}
     stands = {row.tree: row.stand for row in site.table("trees")}
     grounds, within = {}, inventory.plots_within(site)
@@ -103,7 +106,7 @@ def draw_stems(site, seed, species):
         place = (row.stand, "", row.species)
         own = (row.tree, row.tree, place, diameter, row.tree in carrying, 0.0)
         drawn.append(_stem(site, seed, species, *own))
-    return tuple(drawn)
+    return tuple(_with_azimuth(one, seed) for one in drawn) if azimuth else tuple(drawn)
 
 
 def stand_ground(site, stand):
@@ -131,6 +134,14 @@ def leaf_area(leaf_on, leaf_off, standard):
         falling = (off - standard) / day / assumptions.DAYS_OF_AGEING
         share = np.maximum(share, np.clip(np.minimum(rising, falling), 0.0, 1.0))
     return share
+
+
+def _with_azimuth(one, seed):
+    rng = generator(seed, "azimuth", f"{one.stem.stand}/{one.stem.name}")
+    amplitude = float(rng.uniform(*assumptions.AZIMUTH_AMPLITUDE))
+    greatest = float(rng.uniform(0.0, 360.0))
+    stem = replace(one.stem, azimuth_amplitude=amplitude, greatest_azimuth=greatest)
+    return replace(one, stem=stem)
 
 
 def _stem(site, seed, species, name, source, place, diameter, instrumented, count):

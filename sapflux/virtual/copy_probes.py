@@ -1,14 +1,15 @@
 """Probes of a virtual copy: their geometry as the site gives it, the rest drawn."""
 
 import math
+from dataclasses import replace
 
 import numpy as np
 
-from sapflux.physics import heat_pulse
+from sapflux.physics import heat_pulse, wood
 from sapflux.site import dated, inventory
 from sapflux.site.installations import episodes
 from sapflux.units import MM
-from sapflux.virtual import assumptions, sensors
+from sapflux.virtual import assumptions, forest, sensors, strip
 from sapflux.virtual.copy_needs import SAP_FLOW
 from sapflux.virtual.seeds import generator
 
@@ -19,17 +20,27 @@ def installations(site):
     return [episodes(site, name)[-1] for name in names]
 
 
-def draw_probes(site, seed, species, gradients):
+def draw_probes(site, seed, species, gradients, known, wound="cubic"):
     """name -> the sensors of a sap-flow probe: one for each point, or one `RatioProbe`.
 
-    species : name -> `SpeciesTruth`; gradients : as `draw_gradients` gives them.
+    species : name -> `SpeciesTruth`; gradients : as `draw_gradients` gives them; known : name of
+    a stem -> `StemTruth`; wound : "cubic" or "strip". The face of a probe without azimuth is drawn.
     """
     drawn = {}
     for row in installations(site):
         if row.method == "heat_dissipation":
-            drawn[row.probe] = _dissipation(site, row, seed, species, gradients[row.tree])
+            parts = _dissipation(site, row, seed, species, gradients[row.tree])
         elif row.method in SAP_FLOW:
-            drawn[row.probe] = (_ratio(site, row, seed, species),)
+            parts = (_ratio(site, row, seed, species),)
+            if wound == "strip":
+                parts = (replace(parts[0], shown=_strip(parts[0])),)
+        else:
+            continue
+        azimuth = row.azimuth_deg
+        if azimuth is None:
+            azimuth = generator(seed, "face", row.probe).uniform(0.0, 360.0)
+        facing = float(forest.facing(known[row.tree].stem, azimuth))
+        drawn[row.probe] = tuple(replace(part, facing=facing) for part in parts)
     return drawn
 
 
@@ -106,6 +117,14 @@ def _ratio(site, row, seed, species):
         pulse_energy=row.pulse_energy_J_m or usual["pulse_energy"],
         window=window,
     )  # fmt: skip
+
+
+def _strip(probe):
+    diffusivity = wood.thermal_diffusivity(probe.dry_density, probe.water_content)
+    reading = strip.Reading(
+        probe.spacing, probe.spacing_upstream, probe.pulse_length, probe.window
+    )  # fmt: skip
+    return strip.apparent_velocities(probe.wound_width, float(diffusivity), reading)
 
 
 def _wound(site, row, species, drawn):

@@ -5,7 +5,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from sapflux.physics import thermocouple
-from sapflux.virtual import forest, sensors, signals
+from sapflux.virtual import faults_tree, forest, sensors, signals
 from sapflux.virtual import truth as tables
 from sapflux.virtual.weather import Weather
 
@@ -21,7 +21,9 @@ class VirtualTruth:
 
     stems : every `forest.Stem`; strata : stand -> species -> `truth.Stratum`; carriers : species
     -> the species that stands in for it where it has no probes; left_out : what of the site the
-    copy does not show, in words.
+    copy does not show, in words. options : which assumptions were taken: `wound` ("cubic" or
+    "strip"), `azimuth` and `gradients` (bool), `night_cooling` [K], `weather` ("stochastic" or
+    "given").
     """
 
     seed: int
@@ -33,12 +35,19 @@ class VirtualTruth:
     strata: dict
     carriers: dict
     left_out: tuple
+    options: dict
     species: dict = field(repr=False)  # name -> SpeciesTruth
     soil: np.ndarray = field(repr=False)  # (time) relative extractable water [1]
     probes: dict = field(repr=False)  # name -> DissipationProbe of each point, or (RatioProbe,)
     stores: dict = field(repr=False)  # name -> the quantity that its logger keeps
     gradients: dict = field(repr=False)  # tree -> natural gradient in full sun [K]
     known: dict = field(repr=False)  # name of a stem -> StemTruth
+    faults: tuple = field(default=(), repr=False)  # of `faults_kinds.Injected`
+
+    @property
+    def wound(self):
+        """What slows the heat pulses: "cubic", the published correction inverted, or "strip"."""
+        return self.options["wound"]
 
     def tree_flow(self, name):
         """Sap flow of a stem: (time) [kg s-1]. KeyError for no stem of the copy."""
@@ -47,21 +56,27 @@ class VirtualTruth:
 
     def outer(self, name):
         """Flux density just below the cambium of the stem at vigour 1: (time) [kg m-2 s-1]."""
-        return outer_of(self._stem(name).stem, self.species, self.weather, self.soil)
+        outer = outer_of(self._stem(name).stem, self.species, self.weather, self.soil)
+        return outer * faults_tree.alive(self.faults, name, self.weather.end)
 
     def flux_at(self, name):
-        """A function: depths below cambium [m] -> (depth, time) flux density [kg m-2 s-1]."""
+        """A function: depths below cambium [m] -> (depth, time) flux density [kg m-2 s-1].
+
+        The mean around the stem; a probe's face has its `facing` times as much.
+        """
         one, outer = self._stem(name), self.outer(name)
         return lambda depths: forest.flux_density_at(one.stem, one.nodes, outer, depths)
 
     def point_flux(self, probe):
         """True flux density at a probe: (point, time) [kg m-2 s-1].
 
-        The mean along the part of each point in sapwood; 0 for a point wholly outside it.
+        The mean along the part of each point in sapwood, at the probe's face; 0 for a point wholly
+        outside it.
         """
         parts = self._probe(probe)
         stem, flux_at = self._stem(parts[0].tree).stem, self.flux_at(parts[0].tree)
-        return np.array([signals.point_flux(*span, stem, flux_at) for span in spans(parts)])
+        flux = np.array([signals.point_flux(*span, stem, flux_at) for span in spans(parts)])
+        return parts[0].facing * flux
 
     def needle_flux(self, probe):
         """Flux density that would cool a needle evenly as it is cooled: (point, time) [kg m-2 s-1].

@@ -35,7 +35,9 @@ class Response:
 class Stem:
     """A stem of the survey with what nobody can see: vigour and the shape of its profile.
 
-    Lengths in m. `tilt` turns the species' profile: positive is steeper inwards.
+    Lengths in m. `tilt` turns the species' profile: positive is steeper inwards. Around the stem
+    the flux density is a cosine of `azimuth_amplitude` with its greatest value at
+    `greatest_azimuth`; the flow of the stem is that of the mean around it.
     """
 
     name: str
@@ -49,6 +51,8 @@ class Stem:
     tilt: float  # 1
     deficit_ratio: float  # 1, its deficit_scale over that of the species
     alive: bool = True
+    azimuth_amplitude: float = 0.0  # 1
+    greatest_azimuth: float = 0.0  # degree
 
     @property
     def xylem_radius(self):
@@ -115,10 +119,22 @@ def effective_area(stem, nodes):
     return float(np.sum(ring * profile_at(nodes, stem.tilt, depth / stem.sapwood_depth)))
 
 
-def flux_density_at(stem, nodes, outer, depth):
-    """Flux density at depths below the cambium: (depth, time) [kg m-2 s-1].
+def facing(stem, azimuth):
+    """Flux density at a face over the mean around the stem [1]. azimuth : [degree].
 
-    outer : (time), of the species at vigour 1; depth : [m].
+    >>> from types import SimpleNamespace
+    >>> stem = SimpleNamespace(azimuth_amplitude=0.2, greatest_azimuth=90.0)
+    >>> [round(float(facing(stem, azimuth)), 3) for azimuth in (90.0, 150.0, 270.0)]
+    [1.2, 1.1, 0.8]
+    """
+    apart = np.radians(np.asarray(azimuth, float) - stem.greatest_azimuth)
+    return 1.0 + stem.azimuth_amplitude * np.cos(apart)
+
+
+def flux_density_at(stem, nodes, outer, depth):
+    """Mean around the stem of the flux density at depths: (depth, time) [kg m-2 s-1].
+
+    outer : (time), of the species at vigour 1; depth : below the cambium [m].
     """
     ratio = profile_at(nodes, stem.tilt, np.asarray(depth, float) / stem.sapwood_depth)
     return stem.vigour * ratio[:, None] * outer[None, :]

@@ -9,15 +9,17 @@ from sapflux.virtual import sensors
 def dissipation_emf(probe, stem, flux_at, weather, rng, powered=None):
     """Voltage of a heat-dissipation probe at each record of the weather [V].
 
-    flux_at : depths [m] -> (depth, time) flux density [kg m-2 s-1]; rng : generator of its noise;
-    powered : (time), share of each record with the heater on, None for always.
+    flux_at : depths [m] -> (depth, time) flux density [kg m-2 s-1], mean around the stem; rng :
+    generator of its noise; powered : (time), share of each record with the heater on, None for
+    always.
     """
     depths, weights, share = sensors.needle_depths(
         probe.needle_from, probe.needle_to, stem.sapwood_depth
     )
     temperature = sensors.stem_temperature(weather)
     zero = sensors.zero_flow_over_time(probe, progress(weather))
-    difference = sensors.heated_difference(probe, flux_at(depths), weights, share, zero)
+    flux = probe.facing * flux_at(depths)
+    difference = sensors.heated_difference(probe, flux, weights, share, zero)
     difference = sensors.in_wood_of(difference, temperature, probe.conductivity_slope)
     if powered is not None:
         difference = difference * sensors.heater_response(powered, weather.step_s)
@@ -35,7 +37,7 @@ def ratio_rises(probe, stem, flux_at, every, rng_of, rises=sensors.rises):
     pairs = []
     for point in range(len(probe.depths_from)):
         flow = point_flux(probe.depths_from[point], probe.depths_to[point], stem, flux_at)
-        flow = flow.reshape(-1, every).mean(axis=1)
+        flow = probe.facing * flow.reshape(-1, every).mean(axis=1)
         velocity = sensors.apparent_velocity(probe, flow) + probe.offset[point]
         rng = rng_of(point)
         pairs.append([
@@ -48,7 +50,8 @@ def ratio_rises(probe, stem, flux_at, every, rng_of, rises=sensors.rises):
 def point_flux(begin, end, stem, flux_at):
     """Mean flux density along the part of a point in sapwood: (time) [kg m-2 s-1]; else zero.
 
-    begin, end : depths below cambium [m]; flux_at : depths -> (depth, time).
+    begin, end : depths below cambium [m]; flux_at : depths -> (depth, time). Mean around the stem
+    as `flux_at` is.
     """
     depths, weights, _ = sensors.needle_depths(begin, end, stem.sapwood_depth)
     return (weights[:, None] * flux_at(depths)).sum(axis=0)
@@ -63,7 +66,8 @@ def needle_flux(probe, stem, flux_at):
         probe.needle_from, probe.needle_to, stem.sapwood_depth
     )
     one = np.ones(1)
-    cooled = sensors.heated_difference(probe, flux_at(depths), weights, 1.0, one)
+    flux = probe.facing * flux_at(depths)
+    cooled = sensors.heated_difference(probe, flux, weights, 1.0, one)
     return dissipation.flux_density(1.0 / cooled - 1.0, probe.factor, probe.exponent)
 
 

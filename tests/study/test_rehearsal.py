@@ -188,6 +188,24 @@ def test_a_site_without_trees_cannot_be_rehearsed(tmp_path):
         rehearse(plan, tmp_path / "out")
 
 
+def test_faults_are_injected_and_listed(tmp_path, capsys):
+    arguments = ["rehearse", str(SITE), "--seed", "2", "--faults", "many", "--out", str(tmp_path)]
+    assert main([*arguments, "--json"]) == 0
+    report = json.loads(capsys.readouterr().out)
+    listed = (tmp_path / "orvelin" / "seed_2_estimated" / "faults.csv").read_text(encoding="utf-8")
+    assert sum(report["faults"].values()) == len(listed.splitlines()) - 1
+    assert {"heater_power_loss", "stuck_value", "torn_line"} <= report["faults"].keys()
+
+
+def test_the_command_line_offers_the_levels_there_are():
+    from sapflux.cli import parser
+    from sapflux.virtual.faults import LEVELS
+
+    commands = next(a for a in parser()._actions if a.dest != "help" and a.choices)
+    options = {a.dest: a.choices for a in commands.choices["rehearse"]._actions}
+    assert set(options["faults"]) == set(LEVELS)
+
+
 @pytest.mark.slow
 def test_ten_clean_seeds_with_all_known_are_within_one_per_cent(tmp_path):
     """Of error-free sampling of the same trees; what needles take is reported by itself."""
