@@ -175,6 +175,10 @@ def test_every_netcdf_file_passes_the_convention_checker(tmp_path):
     assert [path.stem for path in files] == [
         "heat_dissipation", "heat_ratio", "origin", "probes", "stand", "trees",
     ]  # fmt: skip
+    # what a stage changed stands beside the signal as it was logged; what none changed stands once
+    ratio = run.dataset("heat_ratio")
+    assert {"measured_rise_upstream", "rise_upstream", "logged_velocity"} <= set(ratio.data_vars)
+    assert "measured_logged_velocity" not in ratio
     CheckSuite.load_all_available_checkers()
     for path in files:
         report = tmp_path / "report.txt"

@@ -144,7 +144,7 @@ def _run_method(chain, joined, found, counts, answered, native, block_days):
         installation = working.variables["installation"].isel(core).values
         counts.add(chain.cube, installation, bits.values, answered[..., here])
         if native:
-            kept.append(_native_part(working, bits, core))
+            kept.append(_native_part(chain, working, bits, core))
     if native:
         whole = xr.concat(
             kept, "time", data_vars="minimal", coords="minimal", compat="override", join="override"
@@ -157,14 +157,13 @@ def _run_method(chain, joined, found, counts, answered, native, block_days):
         )
 
 
-def _native_part(working, bits, core):
+def _native_part(chain, working, bits, core):
+    """What the stages made of the records of a block, with their flags."""
+    names = {name for step in chain.steps for name in step.stage.makes}
     made = {
-        name: value.isel(core)
-        for name, value in working.variables.items()
-        if isinstance(value, xr.DataArray)
-        and value.dims == schema.RECORD
-        and name in schema.VARIABLES
-        and name not in ("quality", "origin")
+        name: working.variables[name].isel(core)
+        for name in sorted(names & working.variables.keys())
+        if working.variables[name].dims == schema.RECORD
     }
     return xr.Dataset({**made, "quality": bits}).drop_attrs()
 
