@@ -19,7 +19,7 @@ from sapflux.virtual.faults import fault_table
 from sapflux.virtual.truth import stand_design, stand_mm
 
 DAYS_A_YEAR = 365
-REPORT = "rehearsal.json"  # marks a folder as a rehearsal
+MARK = ".rehearsal"  # marks a folder as one that a rehearsal may replace
 
 
 @dataclass(frozen=True)
@@ -59,8 +59,10 @@ def rehearse(path, out, *, seed=1, years=None, days=None, recipe="stand_water_us
     site = load_site(path)
     folder = Path(out) / site.key / f"seed_{seed}_{knowledge}"
     length = years * DAYS_A_YEAR if years else days
-    if (folder / REPORT).is_file():
+    if (folder / MARK).is_file():
         shutil.rmtree(folder)
+    folder.mkdir(parents=True, exist_ok=True)
+    (folder / MARK).touch()
     truth = write_copy(site, folder / site.key, seed=seed, days=length, knowledge=knowledge,
                        **options)  # fmt: skip
     run = run_site(folder / site.key, recipe=recipe, out=folder / "run")

@@ -4,7 +4,6 @@ import numpy as np
 
 import sapflux
 from sapflux.pipeline.identity import plain, write_json
-from sapflux.study.rehearsal import REPORT
 
 COLUMNS = (
     "level", "name", "species", "unit", "days", "days_refused", "truth", "sampled", "result",
@@ -17,7 +16,7 @@ def write_reports(found):
 
     With faults, `faults.csv` is the truth table of all that were injected.
     """
-    json, csv = found.folder / REPORT, found.folder / "rehearsal.csv"
+    json, csv = found.folder / "rehearsal.json", found.folder / "rehearsal.csv"
     write_json(as_data(found), json)
     rows(found).to_csv(csv, index=False, float_format="%.5f", lineterminator="\n")
     if not len(found.faults):

@@ -156,6 +156,15 @@ def test_the_same_seed_gives_the_same_report_and_another_one_another(tmp_path):
     assert report(4, "a") != first
 
 
+def test_a_rehearsal_cut_short_is_replaced_and_a_folder_of_others_is_not(tmp_path):
+    place = tmp_path / "orvelin" / "seed_3_estimated"
+    rehearse(SITE, tmp_path, seed=3, days=10)
+    rehearse(SITE, tmp_path, seed=3, days=10)
+    (place / ".rehearsal").unlink()
+    with pytest.raises(SiteError, match="something is there already"):
+        rehearse(SITE, tmp_path, seed=3, days=10)
+
+
 def plan_without_logs(folder):
     folder.mkdir()
     for path in SITE.glob("*.csv"):
