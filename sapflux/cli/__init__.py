@@ -75,7 +75,7 @@ def parser():
     )
     start.set_defaults(command=_init)
 
-    check = commands.add_parser("check", help="validate a site, reading only the files' headers")
+    check = commands.add_parser("check", help="validate a site, reading only the head of each file")
     _sites(check)
     check.set_defaults(command=_check)
 

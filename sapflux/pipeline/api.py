@@ -88,6 +88,13 @@ def run_site(
     Raises SiteError, RecipeError or DataError, each with every fault found, and UserError where
     the results cannot be written; the former result then stands as it was.
     """
+    return run_and_keep(
+        path, recipe=recipe, out=out, native=native, keep_all=keep_all, block_days=block_days
+    )[0]
+
+
+def run_and_keep(path, *, recipe, out, native=False, keep_all=False, block_days=BLOCK_DAYS):
+    """As `run_site`, with what was computed still in memory: (`Run`, `Computed`)."""
     start = time.perf_counter()
     site = load_site(path)
     chosen = load_recipe(recipe)
@@ -100,7 +107,7 @@ def run_site(
         write_run(folder, site, chosen, found, identity)
 
     publish(Path(out), site.key, identity, write, keep_all=keep_all)
-    return Run(Path(out) / site.key)
+    return Run(Path(out) / site.key), found
 
 
 def summary(run):

@@ -5,6 +5,7 @@ over all blocks once to gather its rows, it is fitted, and the chain starts agai
 parsing is cheap, so nothing is kept at the native step between these passes.
 """
 
+import inspect
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -26,6 +27,7 @@ class Chain:
     steps : tuple of Step.
     beside : (block's ends [UTC, datetime64[s]], names wanted) -> name -> DataArray: facts,
         weather and sun on those records.
+    offset : fixed standard time minus UTC: blocks are cut at its midnights.
     spread_flags : whether a flag of fewer dims is spread over all points (method chains).
     known : stage -> name -> array on the cube's records that replaces what the stage made, where
         it made a value: how a chain is run again from any stage on, on perturbed or true values.
@@ -35,7 +37,7 @@ class Chain:
     steps: tuple
     beside: object
     spread_flags: bool = True
-    offset: np.timedelta64 = NO_OFFSET  # fixed standard time minus UTC
+    offset: np.timedelta64 = NO_OFFSET
     known: dict = field(default_factory=dict)
 
     @property
@@ -107,8 +109,6 @@ def _fit(step, parts):
 
 def bind_rows(fit, rows, settings):
     """Call a `fit` with its rows and the settings that its signature names."""
-    import inspect
-
     parameters = inspect.signature(fit).parameters
     return fit(rows, **{name: settings[name] for name in parameters if name in settings})
 

@@ -1,5 +1,7 @@
 """Whether a recipe can run on a site: checked whole before any data file is opened."""
 
+from typing import get_args
+
 from sapflux.errors import Fault, RecipeError
 from sapflux.ingest.cube import METHODS, OWNER_OF, probe_names
 from sapflux.ingest.weather import weather_names
@@ -101,8 +103,6 @@ def _remedy(stage, method, name, available):
 
 
 def _choices(stage):
-    from typing import get_args
-
     parameter = stage.settings.get("method")
     return get_args(parameter.annotation) if parameter else ()
 

@@ -51,9 +51,9 @@ def scale(site, recipe, probes, weather, block_days, known=None):
     )
     tables = fitted_tables(chain, block_days)
     parts = {}
-    made = {name for step in steps for name in step.stage.makes}
-    also = ("installation", "in_leaf") if "stand_transpiration" in made else ("installation",)
-    names = made | set(also)
+    names = {name for step in steps for name in step.stage.makes}
+    also = ("installation", "in_leaf") if "stand_transpiration" in names else ("installation",)
+    names |= set(also)
     for block, working in run_blocks(chain, tables, block_days, also):
         for name in sorted(names & working.variables.keys()):
             value = working.variables[name]

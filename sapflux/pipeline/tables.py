@@ -117,7 +117,7 @@ def _cell(value, column):
     if isinstance(value, float) and np.isnan(value):
         return ""
     if isinstance(value, str):
-        return _text(value)
+        return guarded(value)
     if isinstance(value, date):
         return _moment(value, column)
     if isinstance(value, numbers.Real):
@@ -151,7 +151,8 @@ def _moment(value, column):
     return value.strftime("%Y-%m-%d")
 
 
-def _text(value):
+def guarded(value):
+    """Text that no spreadsheet runs as a formula, its control characters spelled out."""
     guarded = FORMULA.match(value) and not NUMBER.fullmatch(value)
     shown = CONTROL.sub(lambda found: f"\\x{ord(found[0]):02x}", value)
     return f"'{shown}" if guarded else shown

@@ -7,9 +7,8 @@ from pathlib import Path
 import numpy as np
 import pandas as pd
 
-from sapflux.pipeline.api import run_site
+from sapflux.pipeline.api import run_and_keep
 from sapflux.pipeline.compute import compute
-from sapflux.pipeline.plan import check_plan
 from sapflux.pipeline.recipe import load_recipe
 from sapflux.scaling.whole_stands import ALL
 from sapflux.site.load import load_site
@@ -65,10 +64,8 @@ def rehearse(path, out, *, seed=1, years=None, days=None, recipe="stand_water_us
     (folder / MARK).touch()
     truth = write_copy(site, folder / site.key, seed=seed, days=length, knowledge=knowledge,
                        **options)  # fmt: skip
-    run = run_site(folder / site.key, recipe=recipe, out=folder / "run")
+    run, first = run_and_keep(folder / site.key, recipe=recipe, out=folder / "run")
     copy, chosen = load_site(folder / site.key), load_recipe(recipe)
-    check_plan(copy, chosen)
-    first = compute(copy, chosen)
     stands = stand_errors(truth, run.table("daily"))
     return Rehearsal(
         folder,

@@ -1,9 +1,12 @@
 """The reports of a rehearsal: `rehearsal.json` and `rehearsal.csv`."""
 
 import numpy as np
+import pandas as pd
 
 import sapflux
 from sapflux.pipeline.identity import plain, write_json
+from sapflux.pipeline.tables import guarded
+from sapflux.scaling.whole_stands import ALL
 
 COLUMNS = (
     "level", "name", "species", "unit", "days", "days_refused", "truth", "sampled", "result",
@@ -18,12 +21,17 @@ def write_reports(found):
     """
     json, csv = found.folder / "rehearsal.json", found.folder / "rehearsal.csv"
     write_json(as_data(found), json)
-    rows(found).to_csv(csv, index=False, float_format="%.5f", lineterminator="\n")
+    _write(rows(found), csv)
     if not len(found.faults):
         return [json, csv]
     faults = found.folder / "faults.csv"
-    found.faults.to_csv(faults, index=False, lineterminator="\n")
+    _write(found.faults, faults)
     return [json, csv, faults]
+
+
+def _write(table, path):
+    safe = table.map(lambda cell: guarded(cell) if isinstance(cell, str) else cell)
+    safe.to_csv(path, index=False, float_format="%.5f", lineterminator="\n", encoding="utf-8")
 
 
 def as_data(found):
@@ -57,11 +65,9 @@ def spread(table):
 
 def rows(found):
     """One table of all levels: stand and species [mm], tree [kg], probe, step [mm]."""
-    import pandas as pd
-
     stands = found.stands.rename(columns=lambda name: name.removesuffix("_mm"))
     stands = stands.rename(columns={"stand": "name"}).assign(
-        level=np.where(found.stands["species"] == "all", "stand", "species"), unit="mm"
+        level=np.where(found.stands["species"] == ALL, "stand", "species"), unit="mm"
     )
     stands["bias"] = stands["result"] / stands["sampled"] - 1.0
     steps = found.steps.rename(columns={"stand": "name", "error_mm": "processing_error"})

@@ -45,7 +45,7 @@ def known_truth(truth, parts):
             return _trees(truth, cube, laid) if "trees" in parts else {}
         made = {}
         if chain == "heat_dissipation" and "zero_flow" in parts:
-            zero = _of_points(truth, cube, laid, lambda probe: truth.zero_flow(probe)[np.newaxis])
+            zero = _of_points(truth, cube, laid, lambda probe: _zero_flow(truth, probe))
             made["zero_flow_difference"] = {"zero_flow_difference": zero}
         of_probe = truth.point_flux if chain in parts else None
         if chain == "heat_dissipation" and "needles" in parts:
@@ -56,6 +56,11 @@ def known_truth(truth, parts):
         return made
 
     return known
+
+
+def _zero_flow(truth, probe):
+    points = len(truth.point_flux(probe))
+    return [truth.zero_flow(probe, point) for point in range(1, points + 1)]
 
 
 def _of_points(truth, cube, laid, of_probe):

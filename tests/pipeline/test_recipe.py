@@ -6,6 +6,7 @@ import pytest
 
 from sapflux.errors import RecipeError
 from sapflux.pipeline.recipe import load_recipe, read_recipe, recipe_names
+from sapflux.stage import REGISTRY, Stage
 
 
 def faults(text):
@@ -167,4 +168,16 @@ def test_a_recipe_file_that_is_not_toml(tmp_path):
 def test_a_part_that_is_no_table():
     assert faults(HEAD.replace("[[", "join = 1\n[[", 1)) == [
         "oak.toml, [join]: not a table. Write its keys under [join]."
+    ]
+
+
+def test_a_setting_without_a_default_must_be_stated(monkeypatch):
+    def flow_index(heated_difference, /, *, smallest_K):
+        return heated_difference
+
+    stage = Stage("flow_index", flow_index, "heat_dissipation", (), ())
+    monkeypatch.setitem(REGISTRY, ("heat_dissipation", "flow_index"), stage)
+    assert faults('[[heat_dissipation]]\nstage = "flow_index"\n') == [
+        "oak.toml, [[heat_dissipation]] step 1: stage 'flow_index' needs the setting 'smallest_K'. "
+        "It has no default: state it."
     ]

@@ -215,6 +215,26 @@ def test_the_command_line_offers_the_levels_there_are():
     assert set(options["faults"]) == set(LEVELS)
 
 
+def test_names_from_the_site_run_no_formula_in_the_reports(rehearsed):
+    stands = rehearsed.stands.replace("upper", "=1+1")
+    paths = write_reports(replace(rehearsed, stands=stands))
+    assert "'=1+1" in paths[1].read_text(encoding="utf-8")
+
+
+def test_every_point_of_a_needle_has_its_true_zero_flow(tmp_path):
+    plan = plan_without_logs(tmp_path / "plan")
+    table = plan / "probes.csv"
+    text = table.read_text(encoding="utf-8")
+    row = next(line for line in text.splitlines() if line.startswith("P01,"))
+    two = row.replace(",0,20,20,", ",0 20,20 40,40,")
+    assert two != row
+    table.write_text(text.replace(row, two), encoding="utf-8")
+    found = rehearse(plan, tmp_path / "out", seed=2, days=20, knowledge="exact", gradients=False)
+    steps = found.steps[found.steps["stand"] == "upper"].set_index("step")["error_mm"]
+    whole = found.stands.query("stand == 'upper' and species == 'all'")["sampled_mm"].iloc[0]
+    assert steps.abs().max() < 0.03 * whole
+
+
 @pytest.mark.slow
 def test_ten_clean_seeds_with_all_known(tmp_path):
     """Within 1 % of error-free sampling, what needles take aside; sampling errors as designed.
