@@ -21,19 +21,24 @@ from dataclasses import dataclass, field
 ORDER = {
     "heat_dissipation": (
         "heated_difference",
+        "heating_cycle",
+        "natural_gradient",
         "screen_power_loss",
         "zero_flow_difference",
         "sapwood_contact",
         "flow_index",
+        "ageing",
         "flux_density",
     ),
     "heat_ratio": (
         "rises",
         "log_heat_ratio",
         "thermal_diffusivity",
+        "zero_flow_ratio",
         "heat_pulse_velocity",
         "zero_offset",
         "wound",
+        "high_flow",
         "flux_density",
     ),
     "scaling": (
@@ -62,6 +67,7 @@ class Stage:
     reach_s: Callable | None = None
     method_needs: dict = field(default_factory=dict)
     limits: dict = field(default_factory=dict)
+    unverified: tuple = ()
 
     @property
     def after(self):
@@ -105,6 +111,8 @@ def stage(*, chain, makes=(), flags=(), **declared):
     reach_s : settings -> seconds it looks to either side of a record, or of a row's start.
     method_needs : method -> names needed by that `method` setting only.
     limits : setting -> (lowest, highest) allowed.
+    unverified : published values that it rests on and that are known from memory only, each as
+        what it is, source in brackets.
 
     ValueError if the chain has a stage of that name, or `ORDER` gives it no place in the chain.
     """

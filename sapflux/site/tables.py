@@ -86,6 +86,8 @@ class Probe(Row):
     window_from_s: NotNegative | None = None
     window_to_s: Positive | None = None
     heater_resistance_ohm: Positive | None = None
+    heating_on_min: Positive | None = None  # of a heating cycle; blank: heated without a break
+    heating_off_min: Positive | None = None
     embedded_diffusivity_cm2_s: Positive | None = None
     embedded_spacing_mm: Positive | None = None
     contact_fraction: Share | None = None
@@ -196,6 +198,9 @@ class Wound(Row):
     species: str = ""
     date: Day
     width_mm: Positive
+    # of a wound that grows from `width_mm` at `date` by 1 - exp(-days / time_constant_d)
+    final_width_mm: Positive | None = None
+    time_constant_d: Positive | None = None
     source: Name
 
 
@@ -205,6 +210,7 @@ class Calibration(Row):
     calibration: Name
     species: Name
     method: Method = "heat_dissipation"
+    heating: Literal["continuous", "intermittent"] = "continuous"
     factor_g_m2_s: Positive
     exponent: Positive
     lowest_index: NotNegative | None = None
