@@ -1,5 +1,9 @@
 """Constants of nature and of the published methods, in SI units, each with its source."""
 
+# The longest heating cycle of a needle that is heated intermittently; those in use last 20 to
+# 60 min. Source: own judgement.
+LONGEST_CYCLE_S = 7200.0
+
 # 0 degC on the thermodynamic scale, exact. Source: SI brochure, 9th edition (2019).
 ZERO_CELSIUS = 273.15
 

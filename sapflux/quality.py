@@ -38,7 +38,7 @@ ROWS = [
     Flag("log_domain", 10, True, "a temperature rise is not positive"),
     Flag("unusable_offset", 11, True, "zero offset too large, or found on too few nights"),
     Flag("beyond_wound_limit", 12, True, "faster than the wound correction covers"),
-    Flag("no_wood_sample", 13, True, "no wood properties for this probe and date"),
+    Flag("no_wood_sample", 13, True, "no wood properties for this date, or implausible ones"),
     Flag("above_baseline", 14, False, "warmer than without flow: negative flow"),
     Flag("beyond_calibration", 15, False, "outside the range of the calibration"),
     Flag("partly_missing", 16, False, "part of the step is missing"),

@@ -50,6 +50,8 @@ ROWS = [
     Variable("natural_difference", RECORD, "K",
              "temperature difference of the unheated pair that serves the probe",
              low=-15, high=15, difference=True),
+    Variable("natural_emf", RECORD, "V", "voltage of the unheated pair that serves the probe",
+             low=-1e-3, high=1e-3),
     # Heat ratio, measured
     Variable("temperature_before_downstream", RECORD, "K",
              "temperature downstream of the heater before the pulse",
@@ -167,6 +169,10 @@ ROWS = [
     Variable("installation", PROBE, "1", "number of the installation, -1 outside"),
     Variable("visited", PROBE, "1", "1 while somebody is at the logger, else 0"),
     Variable("at_rest", PROBE, "1", "1 while a person vouches that no sap flows, else 0"),
+    Variable("installed_age", PROBE, "s", "time since the probe was installed"),
+    Variable("probe_tree", ("probe",), "1", "tree that the probe sits in"),
+    Variable("probe_stratum", ("probe",), "1", "stand and species of the tree that it sits in"),
+    Variable("paired", PROBE, "1", "1 while an unheated pair serves the probe, else 0"),
     Variable("power_off", PROBE, "1", "1 while the heater is off on purpose, else 0"),
     Variable("heating_on", ("probe",), "s", "time heated in a heating cycle, NaN without one"),
     Variable("heating_off", ("probe",), "s", "time not heated in a heating cycle"),
@@ -226,4 +232,17 @@ SIGNALS = {
         "temperature_trace_upstream",
     ),
 }
+# Temperature traces around a heat pulse, and the variables of a record that they are reduced to.
+TRACES = ("temperature_trace_downstream", "temperature_trace_upstream")
+TRACED = (
+    "rise_downstream",
+    "rise_upstream",
+    "mean_log_ratio",
+    "early_log_ratio",
+    "late_log_ratio",
+    "time_of_maximum_downstream",
+    "time_of_maximum_upstream",
+    "decay_time",
+    "pre_pulse_drift",
+)
 CONVENTIONS = "CF-1.11, ACDD-1.3"

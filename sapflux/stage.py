@@ -36,7 +36,6 @@ ORDER = {
         "thermal_diffusivity",
         "zero_flow_ratio",
         "heat_pulse_velocity",
-        "zero_offset",
         "wound",
         "high_flow",
         "flux_density",
@@ -65,9 +64,11 @@ class Stage:
     summarise: Callable | None = None
     fit: Callable | None = None
     reach_s: Callable | None = None
+    settled: Callable | None = None
     method_needs: dict = field(default_factory=dict)
     limits: dict = field(default_factory=dict)
     unverified: tuple = ()
+    follows: dict = field(default_factory=dict)
 
     @property
     def after(self):
@@ -109,10 +110,14 @@ def stage(*, chain, makes=(), flags=(), **declared):
     makes, flags : variables and quality flags it returns.
     table : name of its table; summarise, fit : the functions that make it (see module).
     reach_s : settings -> seconds it looks to either side of a record, or of a row's start.
+    settled : facts on one record a day, and `probe` -> the table where they settle it, so that the
+        records need not be summarised; else None.
     method_needs : method -> names needed by that `method` setting only.
     limits : setting -> (lowest, highest) allowed.
     unverified : published values that it rests on and that are known from memory only, each as
         what it is, source in brackets.
+    follows : setting -> (stage, setting) of the same chain whose value it takes where the recipe
+        lists that stage; a recipe that writes another is refused.
 
     ValueError if the chain has a stage of that name, or `ORDER` gives it no place in the chain.
     """

@@ -69,7 +69,7 @@ WRITTEN = {
 }
 
 # Factors to SI of config keys, by the unit that `unit_of_key` finds; units of SI are left out.
-KEY_FACTORS = {"mm": MM, "cm": CM, "cm2_s": CM2_PER_S, "g_m2_s": G}
+KEY_FACTORS = {"mm": MM, "cm": CM, "min": 60.0, "cm2_s": CM2_PER_S, "g_m2_s": G}
 
 # A temperature difference has no offset, whatever scale it is written in.
 DIFFERENCE_FACTORS = {"K": 1.0, "degC": 1.0, "degF": 5.0 / 9.0}

@@ -33,7 +33,7 @@ def append(site, table, *rows):
     edit(site, table, lambda text: text.rstrip("\n") + "\n" + "\n".join(rows) + "\n")
 
 
-def test_an_unheated_pair_is_taken_in_and_changes_nothing_yet(site, tmp_path):
+def test_an_unheated_pair_is_no_probe_of_flow(site, tmp_path):
     append(site, "probes.csv", "N01,U2-05,unheated_pair,1.3,240,0,20,20,,,,,,,,,,2031-08-17 12:00")
     edit(
         site,

@@ -119,7 +119,16 @@ def parser():
         "rehearse", help="the site's own design on a virtual forest whose truth is known"
     )
     rehearse.add_argument("site", metavar="SITE", help="site folder; a plan without logs will do")
-    rehearse.add_argument("--years", type=_count, metavar="N", help="default: one growing season")
+    length = rehearse.add_mutually_exclusive_group()
+    length.add_argument("--years", type=_count, metavar="N", help="default: one growing season")
+    length.add_argument(
+        "--weather",
+        metavar="TABLE",
+        help="weather from a CSV file in place of an invented season; its whole days are the "
+        "period. A row each interval of at most 3 h; columns end_utc (of the interval), "
+        "air_temperature_degC, relative_humidity_percent and shortwave_radiation_W_m2 (means), "
+        "and if known precipitation_mm (sum), wind_speed_m_s (mean)",
+    )
     rehearse.add_argument("--seed", type=int, default=1, metavar="S", help="default: 1")
     rehearse.add_argument(
         "--recipe",
@@ -137,8 +146,8 @@ def parser():
         "--wound",
         choices=("cubic", "strip"),
         default="cubic",
-        help="true wound: the inverse of the published cubic, or a strip in "
-        "does not conduct, solved numerically; default: cubic",
+        help="true wound: the inverse of the published cubic, or a strip in which no sap moves, "
+        "solved numerically; default: cubic",
     )
     rehearse.add_argument(
         "--faults",
@@ -146,10 +155,36 @@ def parser():
         default="none",
         help="faults of probes, loggers and files to inject; default: none",
     )
+    rehearse.add_argument(
+        "--gradients",
+        choices=("natural", "none"),
+        default="natural",
+        help="whether stems have temperature gradients of their own; default: natural",
+    )
     rehearse.add_argument("--azimuth", action="store_true", help="let flux differ around each stem")
     rehearse.add_argument("--out", metavar="DIR", default="rehearsals", help="default: rehearsals")
     rehearse.add_argument("--json", action="store_true", help="print JSON alone")
     rehearse.set_defaults(command=_rehearse)
+
+    calibrate = commands.add_parser(
+        "calibrate", help="a species' own calibration of heat dissipation from gravimetric flux"
+    )
+    calibrate.add_argument(
+        "table",
+        metavar="TABLE",
+        help="CSV with flow_index and flux_g_m2_s, and if known stem and heating "
+        "(continuous or intermittent)",
+    )
+    calibrate.add_argument("--species", default="", metavar="NAME", help="of the register's row")
+    calibrate.add_argument("--name", default="", metavar="NAME", help="default: that of the file")
+    calibrate.add_argument(
+        "--out",
+        default="calibrations",
+        metavar="DIR|FILE",
+        help="where the plot goes, a folder or an .svg file; default: calibrations",
+    )
+    calibrate.add_argument("--json", action="store_true", help="print JSON alone")
+    calibrate.set_defaults(command=_calibrate)
     return top
 
 
@@ -193,6 +228,12 @@ def _stages(options):
     from sapflux.cli.stages import stages
 
     return stages(options)
+
+
+def _calibrate(options):
+    from sapflux.cli.calibrate import calibrate
+
+    return calibrate(options)
 
 
 def _rehearse(options):

@@ -1,5 +1,6 @@
 """`sapflux rehearse`: the site's own design on a virtual forest whose truth is known."""
 
+from math import isnan, nan
 from pathlib import Path
 
 from sapflux.cli import DONE
@@ -19,6 +20,8 @@ def rehearse(options):
         knowledge=options.knowledge,
         wound=options.wound,
         azimuth=options.azimuth,
+        gradients=options.gradients == "natural",
+        weather=options.weather,
         faults=options.faults,
     )
     paths = write_reports(found)
@@ -49,8 +52,9 @@ def rehearse(options):
 def _print_stands(found):
     rows = [
         [row.stand, row.species, row.days, f"{row.truth_mm:.1f}", f"{row.sampled_mm:.1f}",
-         f"{row.result_mm:.1f}", f"{row.sampling_error_mm:+.1f}", f"{row.processing_error_mm:+.1f}",
-         f"{row.processing_error_mm / row.sampled_mm:+.1%}" if row.sampled_mm else "-",
+         _number(row.result_mm, ".1f"), f"{row.sampling_error_mm:+.1f}",
+         _number(row.processing_error_mm, "+.1f"),
+         _number(row.processing_error_mm / row.sampled_mm if row.sampled_mm else nan, "+.1%"),
          f"{row.design_error_mm:.1f}" if row.design_error_mm == row.design_error_mm else ""]
         for row in found.stands.itertuples()
     ]  # fmt: skip
@@ -60,6 +64,11 @@ def _print_stands(found):
         print(f"  {line}")
     print("\n  sampled: the trees with probes, without error; sampling: sampled minus truth;")
     print("  processing: result minus sampled, over the same days.\n")
+
+
+def _number(value, form):
+    """A number as written, '-' where there is none."""
+    return "-" if isnan(value) else format(value, form)
 
 
 def _print_steps(found):

@@ -99,6 +99,9 @@ def _print(outcome, several, options):
         _print_season(found["season"])
     for text in [*found["refused"], *found["notes"]]:
         print(note(text))
+    if found["unverified"]:
+        values = "; ".join(found["unverified"])
+        print(note(f"values known from memory only, not verified against print: {values}"))
     print(f"\n  Written to {found['folder']} ({found['seconds']:.1f} s), run {found['identity']}:")
     for line in columns([[name, what] for name, what in found["written"]], ["", ""])[1:]:
         print(f"    {line}")

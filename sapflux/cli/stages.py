@@ -48,7 +48,7 @@ def describe_part(part):
          "takes": f"{low:g} to {high:g}"}
         for name, (default, low, high) in known_settings(part).items()
     ]  # fmt: skip
-    return {"stage": f"[{part}]", "chain": "", "flags": [], "settings": settings,
+    return {"stage": f"[{part}]", "chain": "", "flags": [], "unverified": [], "settings": settings,
             "text": inspect.getdoc(PARTS[part])}  # fmt: skip
 
 
@@ -62,6 +62,7 @@ def describe(stage):
         "makes": list(stage.makes),
         "flags": list(stage.flags),
         "table": stage.table,
+        "unverified": list(stage.unverified),
         "settings": [
             {
                 "setting": name,
@@ -102,6 +103,12 @@ def _list(found):
         for line in columns(rows, ["stage", "what it gives"]):
             print(f"  {line}")
         print()
+    unverified = [[stage.name, value] for stage in by_name.values() for value in stage.unverified]
+    if unverified:
+        print("Unverified: published values known from memory only")
+        for line in columns(unverified, ["stage", "value"]):
+            print(f"  {line}")
+        print()
     print("[join], [totals]")
     print("  the two parts that are no stages: how methods meet, and when a period may be totalled")
     print("\nsapflux stages NAME explains one with its settings and sources.")
@@ -121,4 +128,8 @@ def _explain(found):
             print(f"  {line}")
     if found["flags"]:
         print(f"\nFlags: {', '.join(found['flags'])}")
+    if found["unverified"]:
+        print("\nUnverified: published values known from memory only")
+        for value in found["unverified"]:
+            print(f"  {value}")
     print()

@@ -1,5 +1,7 @@
 """Heat ratio signal: from temperatures, rises or a logged velocity to the log of the ratio."""
 
+from typing import Literal
+
 import numpy as np
 import xarray as xr
 
@@ -87,13 +89,21 @@ def log_heat_ratio(
     logged_velocity=None,
     embedded_diffusivity=None,
     embedded_spacing=None,
+    mean_log_ratio=None,
+    pre_pulse_drift=None,
     /,
+    *,
+    estimator: Literal["log_of_means", "mean_of_logs"] = "log_of_means",
 ):
     """Natural logarithm of the downstream over the upstream temperature rise.
 
     Taken from the first of these that a record has: rises, ratio, log ratio, logged velocity.
     A logged velocity was made with a diffusivity and a spacing inside the logger; they are taken
     out of it again, so that the chain applies its own once.
+
+    Over a reading window there are two estimators, which differ with noise and, at a wound, without
+    it. Only temperature traces give the choice: means that the logger made of its window give the
+    logarithm of means, and what a logger stored as a ratio has the estimator of its program.
 
     Parameters
     ----------
@@ -107,6 +117,15 @@ def log_heat_ratio(
         Inside the logged velocity.
     embedded_spacing : (probe) [m]
         Inside the logged velocity.
+    mean_log_ratio : (probe, point, time) [1]
+        Mean of the logarithms of each sample of a trace.
+    pre_pulse_drift : (probe, point, time) [K s-1]
+        Of a record from a trace; tells those apart.
+    estimator : text
+        Of records from traces: "log_of_means", the logarithm of the ratio of the mean rises, is
+        nearly unbiased until the upstream rise comes near three times its noise. "mean_of_logs"
+        is not: samples without a logarithm drop out of it, and at a noise of 0.02 K a true
+        velocity of 80 cm h-1 read 48 in our own calculation. Own judgement.
 
     Returns
     -------
@@ -121,11 +140,19 @@ def log_heat_ratio(
     Source: Burgess et al. (2001), Tree Physiology 21, eq. 1.
     """
     found, refused = [], []
+    traced = None
+    if estimator == "mean_of_logs" and mean_log_ratio is not None and pre_pulse_drift is not None:
+        traced = pre_pulse_drift.notnull()
+        found.append(mean_log_ratio)
+        refused.append(traced & mean_log_ratio.isnull())
     if rise_downstream is not None and rise_upstream is not None:
         positive = (rise_downstream > 0) & (rise_upstream > 0)
         known = rise_downstream.notnull() & rise_upstream.notnull()
         ratio = rise_downstream.where(positive) / rise_upstream.where(positive)
-        found.append(np.log(ratio))
+        log_of_means = np.log(ratio)
+        if traced is not None:
+            log_of_means, known = log_of_means.where(~traced), known & ~traced
+        found.append(log_of_means)
         refused.append(known & ~positive)
     if heat_ratio is not None:
         found.append(np.log(heat_ratio.where(heat_ratio > 0)))

@@ -1,11 +1,13 @@
 """Tables of nights: one row a probe, point, installation and night, with evidence and a reason."""
 
+from dataclasses import dataclass
 from itertools import pairwise
 
 import numpy as np
 import pandas as pd
 
 from sapflux.correction.nights import (
+    Nights,
     in_nights,
     installations_in,
     last_window,
@@ -27,9 +29,29 @@ KEYS = {
 VERDICT = {"records": np.int64, "accepted": bool, "reason": object}
 
 
-def no_rows(*own):
-    """A table of nights without rows; `own` names its columns of numbers."""
-    types = KEYS | dict.fromkeys(own, np.float64) | VERDICT
+@dataclass(frozen=True)
+class Looked:
+    """The nights of a block as one installation of each probe saw them.
+
+    current : (probe, night) its number, -1 for none. seen : (probe, point, night, slot) records.
+    mean, variation : (probe, point, night, window) means, and standard deviation over mean [1];
+    mean_deficit : (night, window) [kPa]; NaN where too few records, as `count` of them tells.
+    size : records of a window.
+    """
+
+    nights: Nights
+    current: np.ndarray
+    seen: np.ndarray
+    mean: np.ndarray
+    variation: np.ndarray
+    count: np.ndarray
+    mean_deficit: np.ndarray
+    size: int
+
+
+def no_rows(*own, **typed):
+    """A table of nights without rows; `own` names its columns of numbers, `typed` others."""
+    types = KEYS | dict.fromkeys(own, np.float64) | typed | VERDICT
     return pd.DataFrame({name: pd.Series(dtype=kind) for name, kind in types.items()})
 
 
@@ -56,7 +78,36 @@ def candidates(
     two (probe, point, night, window) and the third (night, window), NaN where too few records;
     last : (night) window before sunrise; both results (probe, point, night).
     """
-    nights = nights_of(record["time"].values, solar_elevation.values, solar_time.values)
+    parts = []
+    for look in looked_at(
+        record,
+        installation,
+        nights_of(record["time"].values, solar_elevation.values, solar_time.values),
+        vapour_pressure_deficit,
+        averaging_h=averaging_h,
+        least_records_share=least_records_share,
+    ):
+        last = last_window(look.nights, look.size)
+        window, accepted = choose(look.mean, look.variation, look.mean_deficit, last)
+        rows = looked_rows(record, look, window, own[0], accepted=accepted)
+        rows["reason"] = reasons(rows, own[0], averaging_h, highest_deficit_kPa, highest_variation)
+        parts.append(rows[[*KEYS, *own, *VERDICT]])
+    return pd.concat(parts, ignore_index=True) if parts else no_rows(*own)
+
+
+def looked_at(
+    record,
+    installation,
+    nights,
+    vapour_pressure_deficit,
+    *,
+    averaging_h,
+    least_records_share,
+):
+    """Yield `Looked` for each installation met in turn in the nights of a block.
+
+    Arguments as of `candidates`; nights : of the block, as `nights_of` gives them.
+    """
     values = in_nights(record.values, nights, np.nan)
     numbers = in_nights(laid_on(record, installation), nights, -1)
     if vapour_pressure_deficit is None:
@@ -64,31 +115,35 @@ def candidates(
     else:
         deficit = vapour_pressure_deficit.values / PA_PER_KPA
     size = window_records(nights, averaging_h)
-    last = last_window(nights, size)
     air = window_means(in_nights(deficit, nights, np.nan), nights, size, least_records_share)
-    parts = []
     for current in installations_in(numbers):
         seen = np.where((numbers == current[..., None])[:, None], values, np.nan)
         signal = window_means(seen, nights, size, least_records_share)
         with np.errstate(divide="ignore", invalid="ignore"):
             variation = signal.deviation / np.abs(signal.mean)
-        window, accepted = choose(signal.mean, variation, air.mean, last)
-        mean = chosen(signal.mean, window)
-        middle = window_middle(nights, window, size)
-        columns = {
-            "time": np.where(np.isfinite(mean), middle, np.datetime64("NaT", "ns")),
-            own[0]: mean,
-            "mean_deficit_kPa": chosen(air.mean, window),
-            "variation": chosen(variation, window),
-            "records": chosen(signal.count, window),
-            "accepted": accepted,
-            "night_records": np.isfinite(seen).sum(axis=-1),
-            "long_enough": nights.length >= size,
-        }
-        rows = night_rows(record, current, nights, columns)
-        rows["reason"] = reasons(rows, own[0], averaging_h, highest_deficit_kPa, highest_variation)
-        parts.append(rows[[*KEYS, *own, *VERDICT]])
-    return pd.concat(parts, ignore_index=True) if parts else no_rows(*own)
+        means = (signal.mean, variation, signal.count, air.mean)
+        yield Looked(nights, current, seen, *means, size)
+
+
+def looked_rows(record, look, window, value, **more):
+    """Rows of a table of nights: the window numbered for each night, as far as it tells.
+
+    window : (probe, point, night); value : name of the column for its mean; more : further
+    columns, (probe, point, night). Beside these, records in the window and in the night, and
+    whether the night is long enough for one.
+    """
+    mean = chosen(look.mean, window)
+    middle = window_middle(look.nights, window, look.size)
+    columns = {
+        "time": np.where(np.isfinite(mean), middle, np.datetime64("NaT", "ns")),
+        value: mean,
+        "mean_deficit_kPa": chosen(look.mean_deficit, window),
+        "variation": chosen(look.variation, window),
+        "records": chosen(look.count, window),
+        "night_records": np.isfinite(look.seen).sum(axis=-1),
+        "long_enough": look.nights.length >= look.size,
+    }
+    return night_rows(record, look.current, look.nights, columns | more)
 
 
 def chosen(values, window):
@@ -124,10 +179,27 @@ def without_silent(rows):
     return rows[(rows["reason"] != "no night record").groupby(keys).transform("any")]
 
 
-def laid_on(record, installation):
-    """`installation` as (probe, time) int array on the records of `record`."""
+def laid_on(record, values):
+    """`values` as (probe, time) array on the records of `record`: an installation, or a fact."""
     flat = record.isel(point=0, drop=True)
-    return installation.broadcast_like(flat).transpose("probe", "time").values
+    return values.broadcast_like(flat).transpose("probe", "time").values
+
+
+def in_words(size, causes):
+    """(size) in words, the first of the causes that holds for each row; "" where none does.
+
+    causes : (holds, text) or (holds, text, values, ...): a text with a place in braces for one
+    value of each of the arrays.
+
+    >>> in_words(3, [(np.array([0, 1, 1]) > 0, "{:g} K", np.array([1, 2, 3])), (True, "dry")])
+    array(['dry', '2 K', '3 K'], dtype=object)
+    """
+    words = np.full(size, "", dtype=object)
+    for holds, text, *values in causes:
+        here = np.flatnonzero(np.broadcast_to(holds, size) & (words == ""))
+        told = [np.asarray(array)[here] for array in values]
+        words[here] = [text.format(*row) for row in zip(*told, strict=True)] if told else text
+    return words
 
 
 def same_key(rows):

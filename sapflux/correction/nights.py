@@ -5,7 +5,7 @@ known by the true solar noon before it, found from the night's own records, so t
 for every way of cutting the record into blocks that hold the night whole.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -96,6 +96,15 @@ def in_nights(values, nights, outside):
     return np.where(slots < nights.length[:, None], values[..., place], outside)
 
 
+def with_hours_before(nights, hours):
+    """The nights lengthened by so many hours before midnight, as far as the block has them.
+
+    Up to 11 h, or they would reach to the noon that the night is known by.
+    """
+    back = np.minimum(round(hours * 3600 * SECOND_NS / nights.step_ns), nights.first)
+    return replace(nights, first=nights.first - back, length=nights.length + back)
+
+
 def window_records(nights, averaging_h):
     """Number of records in a window of `averaging_h`, at least one."""
     return max(1, round(averaging_h * 3600 * SECOND_NS / nights.step_ns))
@@ -131,6 +140,50 @@ def window_means(values, nights, records, least_records):
         np.where(enough, deviation, np.nan),
         count,
     )
+
+
+def window_slopes(values, nights, records, least_records):
+    """Slope of the least-squares line through every window, in units of `values` an hour.
+
+    Arguments and result as of `window_means`; NaN also where a window has but one record.
+    """
+    mean = window_means(values, nights, records, least_records).mean
+    if values.shape[-1] < records:
+        return mean
+    there = np.isfinite(values)
+    filled = np.where(there, values, 0.0)
+    number = np.cumsum(there, axis=-1)[..., -1:]
+    centre = np.cumsum(filled, axis=-1)[..., -1:] / np.maximum(number, 1)
+    y = np.where(there, values - centre, 0.0)
+    x = np.where(there, np.arange(values.shape[-1], dtype=float), 0.0)
+    count = _moving_sum(there, records)
+    sum_x, sum_y = _moving_sum(x, records), _moving_sum(y, records)
+    spread = count * _moving_sum(x**2, records) - sum_x**2
+    known = np.isfinite(mean) & (count > 1)
+    slope = (count * _moving_sum(x * y, records) - sum_x * sum_y) / np.where(known, spread, 1.0)
+    return np.where(known, slope * (3600 * SECOND_NS / nights.step_ns), np.nan)
+
+
+def record_noise(values):
+    """Standard deviation of the noise from record to record, of (..., night, slot) a night.
+
+    From the median of the absolute second differences, which a steady rise or fall does not
+    touch: for independent normal noise of deviation s they have the deviation sqrt(6) s, and the
+    median of their absolute value is 0.6745 of that. NaN where three records never follow one
+    another.
+
+    Source: own derivation; 0.6745 is the upper quartile of the standard normal distribution.
+
+    >>> round(float(record_noise(np.array([0.0, 1.0, 0.0, 1.0]))), 3)  # differences -2 and 2
+    1.211
+    """
+    second = np.sort(np.abs(np.diff(values, n=2, axis=-1)), axis=-1)  # NaN stand last
+    count = np.isfinite(second).sum(axis=-1)
+    if not second.shape[-1]:
+        return np.full(values.shape[:-1], np.nan)
+    middle = np.maximum(np.stack([(count - 1) // 2, count // 2], axis=-1), 0)
+    median = np.take_along_axis(second, middle, axis=-1).sum(axis=-1) / 2
+    return median / (0.6745 * np.sqrt(6.0))
 
 
 def window_middle(nights, window, records):

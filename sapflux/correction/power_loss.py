@@ -28,6 +28,8 @@ def screen_power_loss(
     heated_difference,
     heater_voltage=None,
     heater_state=None,
+    power_off=None,
+    heating_on=None,
     /,
     *,
     smallest_difference_K=1.5,
@@ -49,6 +51,12 @@ def screen_power_loss(
         Where logged.
     heater_state : (probe, time) [1]
         Share of the interval with the heater on, where logged.
+    power_off : (probe, time) [1]
+        1 where the heater was off on purpose, by `references.csv`: a difference that has not
+        fallen yet would be read as flow.
+    heating_on : (probe) [s]
+        Set for probes heated in cycles: their pauses are no outages, and voltage and state are
+        not looked at. The difference that a cycle makes tells of an outage all the same.
     smallest_difference_K : float [K]
         Below this the heater is off: above the natural gradients of stems, and below the
         difference at the highest flow that the calibration covers. Own judgement.
@@ -71,10 +79,13 @@ def screen_power_loss(
     Source: common practice; the thresholds are own judgement.
     """
     off = heated_difference < smallest_difference_K
+    steady = True if heating_on is None else heating_on.isnull()
     if heater_voltage is not None:
-        off = off | (heater_voltage < least_heater_V)
+        off = off | ((heater_voltage < least_heater_V) & steady)
     if heater_state is not None:
-        off = off | (heater_state < least_heater_share)
+        off = off | ((heater_state < least_heater_share) & steady)
+    if power_off is not None:
+        off = off | (power_off > 0)
     off = off.transpose(*heated_difference.dims)
     stamps = heated_difference["time"].values.astype("datetime64[ns]").astype(np.int64)
     failure, recovery = np.zeros((2, *off.shape), dtype=bool)

@@ -10,6 +10,10 @@ from sapflux.stage import stage
     chain="heat_ratio",
     makes="flux_density",
     flags="no_wood_sample",
+    unverified=(
+        "conversion of pulse velocity (Barrett et al. 1995; Burgess et al. 2001)",
+        "heat capacity of dry wood (Edwards & Warwick 1984)",
+    ),
 )
 def flux_density(heat_pulse_velocity, dry_density, water_content, /):
     """Sap flux density behind a heat pulse velocity.

@@ -45,9 +45,10 @@ def values_of(channel, series, site):
     return rows, values, withheld[rows] if withheld is not None else np.zeros(len(rows), bool)
 
 
-def single_series(site, logs, kind, quantity, thing=None):
+def single_series(site, logs, kind, quantity, thing=None, point=None):
     """One quantity of one thing as a `Series`, put together from all its channels.
 
+    thing, point : name and point of the thing; None: whichever it is.
     Values that are excluded, or outside the plausible range of the schema, become NaN. None where
     the site has no such channel, or its channels have no record.
     """
@@ -56,6 +57,8 @@ def single_series(site, logs, kind, quantity, thing=None):
         if (channel.kind, channel.quantity) != (kind, quantity) or channel.log not in logs:
             continue
         if thing is not None and channel.id != thing:
+            continue
+        if point is not None and channel.point != point:
             continue
         series = logs[channel.log]
         rows, values, _ = values_of(channel, series, site)

@@ -6,13 +6,20 @@ import xarray as xr
 from sapflux import quality, schema
 from sapflux.errors import DataError, Fault
 from sapflux.ingest.channels import excluded, single_series, values_of, within
+from sapflux.ingest.pulse_traces import is_trace, record_ends, record_interval_s, traced_points
 from sapflux.ingest.series import grid, on_records, place
+from sapflux.ingest.unheated import natural_signals
 from sapflux.site.installations import installation_numbers, installed_span
 
 METHODS = ("heat_dissipation", "heat_ratio")  # unheated pairs serve these, and have no chain
 
 # Series of a whole logger or tree that a stage may ask for beside the probe's own signal.
-OWNER_OF = {"heater_voltage": "log", "heater_state": "log", "stem_temperature": "tree"}
+OWNER_OF = {
+    "heater_voltage": "log",
+    "heater_state": "log",
+    "stem_temperature": "tree",
+    "stem_diameter_change": "tree",
+}
 
 
 def measured_cubes(site, logs):
@@ -31,7 +38,7 @@ def measured_cubes(site, logs):
             continue
         method = _method(site, channel.id)
         if method in METHODS and channel.quantity in schema.SIGNALS[method]:
-            key = (method, logs[channel.log].interval_s)
+            key = (method, record_interval_s(site, logs, channel))
             groups.setdefault(key, []).append(channel)
     return {key: _cube(site, logs, key, channels) for key, channels in sorted(groups.items())}
 
@@ -74,12 +81,15 @@ def _cube(site, logs, key, channels):
     points = max(channel.point for channel in channels)
     time = _axis(site, logs, channels, probes, interval_s)
     shape = (len(probes), points, len(time))
-    signals = {c.quantity: np.full(shape, np.nan) for c in channels}
+    names = [name for c in channels for name in (schema.TRACED if is_trace(c) else (c.quantity,))]
+    signals = {name: np.full(shape, np.nan) for name in names}
     expected = np.zeros(shape, dtype=bool)
     absent = np.zeros(shape, dtype=bool)
     conflicting = np.zeros(shape, dtype=bool)
     beyond = np.zeros(shape, dtype=bool)
     for channel in channels:
+        if is_trace(channel):
+            continue
         series = logs[channel.log]
         rows, values, withheld = values_of(channel, series, site)
         if not len(rows) or not len(time):
@@ -95,6 +105,19 @@ def _cube(site, logs, key, channels):
         conflicting[where] |= withheld
         with np.errstate(invalid="ignore"):
             beyond[where] |= (values < row.low) | (values > row.high)
+    for probe, point, traced in traced_points(site, logs, channels, time):
+        where = (probes.index(probe), point - 1)
+        lost = traced.there & np.isnan(traced.readings["pre_pulse_drift"])
+        for name, values in traced.readings.items():
+            signals[name][where] = np.where(traced.there, values, signals[name][where])
+        expected[where] |= traced.there
+        absent[where] |= lost
+        conflicting[where] |= lost & traced.withheld
+        beyond[where] |= lost & traced.beyond
+        for name in ("rise_downstream", "rise_upstream"):
+            row, values = schema.QUANTITIES[name], traced.readings[name]
+            with np.errstate(invalid="ignore"):
+                beyond[where] |= (values < row.low) | (values > row.high)
     taken_out = _excluded(site, probes, channels, time, interval_s)[:, None, :]
     outside = installation_numbers(site, probes, time, interval_s) < 0
     bits = quality.bits(
@@ -107,6 +130,8 @@ def _cube(site, logs, key, channels):
     variables = {name: (schema.RECORD, values) for name, values in signals.items()}
     variables["quality"] = (schema.RECORD, bits)
     variables.update(_beside(site, logs, probes, channels, time, interval_s))
+    if method == "heat_dissipation":
+        variables.update(natural_signals(site, logs, probes, points, time, interval_s))
     coords = {
         "probe": np.array(probes, dtype=object).astype(str),
         "point": np.arange(1, points + 1),
@@ -120,7 +145,10 @@ def _axis(site, logs, channels, probes, interval_s):
 
     A clock that fell back to its epoch would else stretch the cube over decades of nothing.
     """
-    ends = [logs[name].end for name in {channel.log for channel in channels}]
+    ends = [
+        record_ends(site, logs, channel)
+        for channel in {(c.log, is_trace(c)): c for c in channels}.values()
+    ]
     first, last = installed_span(site, probes)
     inside = [end[(end > first) & (end <= last)] for end in ends]
     inside = [end for end in inside if len(end)]
@@ -138,7 +166,7 @@ def answered_records(site, logs, cube):
     for channel in site.table("channels"):
         own = channel.kind == "probe" and channel.id in probes and channel.log in logs
         signal = channel.quantity in schema.SIGNALS[cube.attrs["method"]]
-        if own and signal and logs[channel.log].interval_s == interval_s:
+        if own and signal and record_interval_s(site, logs, channel) == interval_s:
             where = (probes.index(channel.id), channel.point - 1)
             covered[where] |= within(site, channel, end, interval_s)
     return covered

@@ -158,9 +158,20 @@ def _unread(site, log, heads, samples):
 
 def _wrong_step(site, log, samples):
     """The fault of a log whose records follow each other at another step than declared."""
-    minutes = site.logs[log].interval_min
-    step_s = commonest_step(samples, minutes * 60)
-    if step_s is not None and not same_step(step_s, minutes * 60):
+    minutes, traced = site.logs[log].interval_min, site.logs[log].trace_step_s
+    declared_s = site.logs[log].row_s
+    step_s = commonest_step(samples, declared_s)
+    if step_s is None or same_step(step_s, declared_s):
+        return
+    if traced:
+        yield Fault(
+            f"{site.folder}/site.toml, [logs.{log}]",
+            f"steps of {step_s:g} s are commonest between the rows of its files, and trace_step_s "
+            f"is {traced:g}",
+            "Give the seconds from one row to the next around a pulse; a log without traces has "
+            "no trace_step_s.",
+        )
+    else:
         yield Fault(
             f"{site.folder}/site.toml, [logs.{log}]",
             f"steps of {step_s / 60:g} min are commonest between the records of its files, and "
@@ -196,7 +207,7 @@ def _lacking_notes(site, log, heads):
 
 def _span(site, log, head):
     """(begin, end) of a file's records, UTC; None where the head does not tell."""
-    interval = round(site.logs[log].interval_min * 60) * clock.SECOND
+    interval = site.logs[log].row_s * clock.SECOND
     layout = _layout(site, log)
     ((ends, valid, _),) = to_utc([sample(head, layout, set())], site.logs[log], layout, interval)
     ends = ends[valid]

@@ -6,11 +6,15 @@ A run is what a file holds of one repeated hour without a break. In order of evi
    hour that repeats.
 2. The record before it in its file is less than the repeated span older: first pass.
 3. It begins inside the hour. Lines that another file shows in one pass belong to that pass.
-4. Another file runs through the same times in the first pass, with other lines: second pass.
-5. A record of another file that leads into the first pass is less than the repeated span older:
+4. Another file runs through the same times in one pass, with other lines: the other pass.
+5. It leads without a gap into the record after it in its file: second pass. Or it follows, or leads
+   into, a record known of one pass alone without a gap: that pass. Where these disagree, none is
+   taken.
+6. A record of another file that leads into the first pass is less than the repeated span older:
    first pass.
-6. It leads on to the record after it in its file: second pass.
 7. Nothing tells: first pass.
+Of the runs that are left the one with the best evidence is settled next, and is evidence then.
+Where records are lost inside the hour and files end there too, this may take the wrong pass.
 """
 
 from dataclasses import dataclass
@@ -86,9 +90,12 @@ def civil_utc(files, zone_name, interval):
     if waiting:
         clear = [parsed.local[~r.repeated] for parsed, r in zip(files, readings, strict=True)]
         clear = np.unique(np.concatenate(clear))
-        for run in sorted(waiting, key=lambda one: one.lines):
-            first = _is_first_pass(run, known, clear, interval)
-            settle(run, len(run.lines) if first else 0)
+        waiting.sort(key=lambda one: one.lines)
+    while waiting:
+        told = [_evidence(run, known, clear, interval) for run in waiting]
+        best = min(range(len(waiting)), key=lambda n: told[n][0])
+        run = waiting.pop(best)
+        settle(run, len(run.lines) if told[best][1] else 0)
     return [(moments, reading.absent) for moments, reading in zip(utc, readings, strict=True)]
 
 
@@ -138,19 +145,47 @@ def _take(taken, lines):
         taken.setdefault((local, cell), set()).add(text)
 
 
-def _is_first_pass(run, known, clear, interval):
-    def shared(taken):
-        return any(text in taken.get((local, cell), ()) for local, cell, text in run.lines)
-
-    in_first, in_second = shared(known.first), shared(known.second)
-    if in_first != in_second:
-        return in_first
+def _evidence(run, known, clear, interval):
+    """(number of the rule that tells, whether it tells of the first pass)."""
+    alike = [_shares(run, taken) for taken in (known.first, known.second)]
+    if alike[0] != alike[1]:
+        return 3, alike[0]
     for low, high, cells in known.through:
         if any(low <= local <= high and cell in cells for local, cell, _ in run.lines):
-            return False
+            return 4, False
+    if any((local, cell) in known.second for local, cell, _ in run.lines):
+        return 4, True
+    links = _links(run, known, clear, LONGEST_STEP * interval)
+    if len(links) == 1:
+        return 5, links.pop()
     start = run.lines[0][0]
     if ((clear < start) & (clear > start - run.shift)).any():
-        return True
+        return 6, True
     if any(0 < start - local < run.shift for local, _ in known.first):
-        return True
-    return not 0 < run.after <= LONGEST_STEP * interval
+        return 6, True
+    return 7, True
+
+
+def _shares(run, taken):
+    """Whether a line of the run is one of those taken."""
+    return any(text in taken.get((local, cell), ()) for local, cell, text in run.lines)
+
+
+def _links(run, known, clear, longest):
+    """What records less than `longest` before or after the run tell: a set of first pass or not."""
+    start, last = run.lines[0][0], run.lines[-1][0]
+    links = set()
+    if 0 < run.after <= longest:
+        links.add(False)
+    if ((clear < start) & (clear >= start - longest)).any():
+        links.add(True)
+    for near in (
+        lambda local: 0 < start - local <= longest,
+        lambda local: 0 < local - last <= longest,
+    ):
+        first, second = (
+            any(near(local) for local, _ in taken) for taken in (known.first, known.second)
+        )
+        if first != second:
+            links.add(first)
+    return links

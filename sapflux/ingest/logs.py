@@ -40,7 +40,7 @@ def read_log(site, log_name):
     """
     log = site.logs[log_name]
     layout = site.layouts[log.layout]
-    interval = max(1, round(log.interval_min * 60)) * clocks.SECOND
+    interval = log.row_s * clocks.SECOND
     channels = [c for c in site.table("channels") if c.log == log_name]
     wanted = {c.column for c in channels} or None
 

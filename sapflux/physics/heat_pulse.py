@@ -26,6 +26,8 @@ PUBLISHED_WOUND = np.array(
         [0.30, 2.4908, -0.0057, 0.0010, 2.6383],
     ]
 )
+PUBLISHED_SPACING = 6e-3  # m
+PUBLISHED_WINDOW = (60.0, 100.0)  # s since the end of heating
 NARROWEST_WOUND = 1.7e-3  # m, ends of the published table
 WIDEST_WOUND = 3.0e-3
 # Above this the cubic runs away (at 3.0 mm it turns 60 into 344 cm h-1). Common practice.

@@ -93,11 +93,16 @@ def run_site(
     )[0]
 
 
-def run_and_keep(path, *, recipe, out, native=False, keep_all=False, block_days=BLOCK_DAYS):
-    """As `run_site`, with what was computed still in memory: (`Run`, `Computed`)."""
+def run_and_keep(
+    path, *, recipe, out, native=False, keep_all=False, block_days=BLOCK_DAYS, beside=True
+):
+    """As `run_site`, with what was computed still in memory: (`Run`, `Computed`).
+
+    beside : whether to run the methods that the recipe lists beside its own.
+    """
     start = time.perf_counter()
     site = load_site(path)
-    chosen = load_recipe(recipe)
+    chosen = load_recipe(recipe) if beside else load_recipe(recipe).alone()
     check_plan(site, chosen)
     found = compute(site, chosen, native=native, block_days=block_days)
     identity = run_identity(site, chosen, found)
@@ -124,6 +129,7 @@ def summary(run):
         "season": run.table("season").to_dict("records") if scaled else [],
         "refused": [*refused_days(run.table("daily"))] if scaled else [],
         "notes": run.record["notes"],
+        "unverified": run.record["unverified"],
         "folder": str(run.folder),
         "identity": run.record["identity"],
         "written": [

@@ -21,11 +21,13 @@ from sapflux.pipeline.check import (
     uninstalled_notes,
 )
 from sapflux.pipeline.execute import BLOCK_DAYS, Chain, fitted_tables, run_blocks
-from sapflux.pipeline.installation_lives import FlagCounts, installation_table
+from sapflux.pipeline.installation_lives import FlagCounts, installation_table, window_drifts
 from sapflux.pipeline.join import Joined, common_grid
-from sapflux.pipeline.notes import notes_of, notes_of_lives
+from sapflux.pipeline.notes import notes_of, notes_of_lives, notes_of_methods
+from sapflux.pipeline.plan import methods_beside
 from sapflux.pipeline.scale import ground_of, labelled, scale
-from sapflux.pipeline.total_tables import total_tables
+from sapflux.pipeline.side_by_side import Compared, Corrected, run_beside
+from sapflux.pipeline.total_tables import days_of, total_tables
 from sapflux.scaling.whole_stands import with_whole_stands
 
 
@@ -40,6 +42,7 @@ class Computed:
     native: dict = field(default_factory=dict)  # method -> Dataset at the native step
     tables: dict = field(default_factory=dict)  # name -> DataFrame
     evidence: dict = field(default_factory=dict)  # table of a summarising stage -> DataFrame
+    beside: Compared | None = None  # methods run beside the recipe's own
     history: list = field(default_factory=list)  # one line a stage
     notes: list = field(default_factory=list)  # what a person should know first
     seconds: dict = field(default_factory=dict)
@@ -70,7 +73,7 @@ def compute(site, recipe, *, native=False, block_days=BLOCK_DAYS, logs=None, kno
         )
         raise DataError([nothing, *silent_logs(site, logs)])
     joined = Joined(list(cubes.values()), ends, step_s, recipe.join["least_coverage"])
-    counts = FlagCounts()
+    counts, answered = FlagCounts(), {}
     for (method, interval_s), cube in cubes.items():
         chain = Chain(
             cube,
@@ -79,11 +82,11 @@ def compute(site, recipe, *, native=False, block_days=BLOCK_DAYS, logs=None, kno
             offset=site.offset,
             known=known(method, cube),
         )
-        answered = answered_records(site, logs, cube)
-        _run_method(chain, joined, found, counts, answered, native, block_days)
+        here = answered[method, interval_s] = answered_records(site, logs, cube)
+        _run_method(chain, joined, found, counts, here, native, block_days)
         found.history += [f"{step.line()} at {interval_s} s" for step in chain.steps]
     stopwatch.lap("correct")
-    found.probes = labelled(site, joined.dataset())
+    found.probes = unscaled = labelled(site, joined.dataset())
     found.history.append(f"join: {dict(recipe.join)!r} to {step_s} s")
     replaced = known("scaling", found.probes)
     scaled = scale(site, recipe, found.probes, weather, block_days, replaced)
@@ -91,13 +94,23 @@ def compute(site, recipe, *, native=False, block_days=BLOCK_DAYS, logs=None, kno
     found.evidence |= scaled.tables
     found.history += [step.line() for step in recipe.chains["scaling"]]
     stopwatch.lap("scale")
-    lives = installation_table(site, counts, found.evidence)
+    lives = installation_table(site, counts, found.evidence, window_drifts(site, cubes))
     found.tables["installations"] = lives
     found.notes += notes_of_lives(lives, found.evidence)
-    found.tables |= total_tables(site, recipe, found, weather)
+    days = None if found.stand is None else days_of(site, recipe, found.stand, weather)
+    found.tables |= total_tables(site, recipe, found.trees, days)
     if found.stand is not None:
         found.stand = with_whole_stands(found.stand, ground_of(site, ends))
     stopwatch.lap("total")
+    chosen, left_out = methods_beside(site, recipe)
+    if chosen:
+        corrected = Corrected(
+            cubes, answered, unscaled, found.probes, weather, days, found.evidence
+        )
+        found.beside = run_beside(site, recipe, corrected, chosen, block_days)
+        found.tables |= found.beside.tables()
+    found.notes += notes_of_methods(found.beside, left_out)
+    stopwatch.lap("beside")
     found.seconds = stopwatch.seconds
     return found
 
@@ -130,19 +143,16 @@ def _run_method(chain, joined, found, counts, answered, native, block_days):
     wanted = ("installation",)
     for block, working in run_blocks(chain, tables, block_days, wanted):
         core = {"time": block.core}
-        flux = working.variables["flux_density"].isel(core).transpose(*schema.RECORD)
-        bits = working.quality[schema.RECORD].isel(core).transpose(*schema.RECORD)
+        bits = joined.add_block(chain, block, working, answered)
         here = slice(block.core_first, block.core_last)
-        joined.add(
-            chain.cube["probe"].values,
-            flux.values,
-            bits.values,
-            chain.ends[here],
-            chain.interval_s,
-            answered[..., here],
-        )
         installation = working.variables["installation"].isel(core).values
         counts.add(chain.cube, installation, bits.values, answered[..., here])
+        if "baseline_amplification" in working.variables:
+            flux, gain = (
+                working.variables[name].isel(core).transpose(*schema.RECORD).values
+                for name in ("flux_density", "baseline_amplification")
+            )
+            counts.add_amplification(chain.cube, installation, flux, gain)
         if native:
             kept.append(_native_part(chain, working, bits, core))
     if native:

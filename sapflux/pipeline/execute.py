@@ -16,6 +16,7 @@ from sapflux import quality, schema
 from sapflux.pipeline.blocks import NO_OFFSET, blocks, span
 from sapflux.stage import bind
 
+DAY_S = 86_400
 BLOCK_DAYS = 60  # long enough that labels cost little beside arithmetic, short enough for memory
 
 
@@ -66,6 +67,10 @@ def fitted_tables(chain, block_days=BLOCK_DAYS):
     for index, step in enumerate(chain.steps):
         if step.stage.summarise is None:
             continue
+        settled = _settled(chain, step)
+        if settled is not None:
+            tables[step.stage.table] = settled
+            continue
         rows = [
             _summary(chain, step, index, block, tables)
             for block in _blocks(chain, chain.steps[: index + 1], block_days)
@@ -90,6 +95,15 @@ def _blocks(chain, steps, block_days):
 def _reach(steps):
     """Seconds of halo that keep the core right: each stage spoils at most its own reach."""
     return sum(step.stage.reach_s(step.settings) for step in steps if step.stage.reach_s)
+
+
+def _settled(chain, step):
+    """The table of a summarising stage where facts alone settle it, else None."""
+    if step.stage.settled is None:
+        return None
+    ends = chain.ends[:: max(1, DAY_S // chain.interval_s)]
+    facts = chain.beside(ends, set(inspect.signature(step.stage.settled).parameters))
+    return bind(step.stage.settled, {**facts, "probe": chain.cube["probe"]}, step.settings)
 
 
 def _summary(chain, step, index, block, tables):

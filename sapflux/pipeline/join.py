@@ -80,6 +80,25 @@ class Joined:
         flags = laid(np.where(answered, bits, np.int32(0)), 0)
         self.quality[here] |= np.bitwise_or.reduce(flags, axis=-1)
 
+    def add_block(self, chain, block, working, answered):
+        """Lay the core of a block after all stages of its chain; returns its flags.
+
+        answered : (probe, point, time) bool of the whole cube, as for `add`.
+        """
+        core = {"time": block.core}
+        flux = working.variables["flux_density"].isel(core).transpose(*schema.RECORD)
+        bits = working.quality[schema.RECORD].isel(core).transpose(*schema.RECORD)
+        here = slice(block.core_first, block.core_last)
+        self.add(
+            chain.cube["probe"].values,
+            flux.values,
+            bits.values,
+            chain.ends[here],
+            chain.interval_s,
+            answered[..., here],
+        )
+        return bits
+
     def dataset(self):
         """The joined cube."""
         enough = (self.covered > 0) & (self.covered >= self.least_coverage * self.step_s)

@@ -2,12 +2,15 @@
 
 from sapflux import quality
 from sapflux.ingest.cube import METHODS
+from sapflux.scaling.whole_stands import ALL
+from sapflux.site.installations import heating
 from sapflux.site.inventory import bark_known, composition, sapwood_depth, tree_row
 
 MM_PER_M = 1000.0
 LEAST_USABLE = 0.2  # share of usable records below which a probe is told of: own judgement
 NEARLY_ALL = 0.9
-NIGHTS_OF = {"no_baseline": "zero_flow_nights", "unusable_offset": "zero_offset_nights"}
+OLD_D = 365  # days after which the age of a probe is told of: own judgement
+NIGHTS_OF = {"no_baseline": "zero_flow_nights", "unusable_offset": "zero_ratio_nights"}
 
 GENERAL = (
     "general calibration of heat dissipation for {}: published comparisons find it low by 35 to "
@@ -56,9 +59,13 @@ def _calibration(site, recipe):
     probed = {
         species.get(probe.tree)
         for probe in site.table("probes")
-        if probe.method == "heat_dissipation"
+        if probe.method == "heat_dissipation" and heating(probe) == "continuous"
     }
-    own = {c.species for c in site.table("calibrations") if c.method == "heat_dissipation"}
+    own = {
+        c.species
+        for c in site.table("calibrations")
+        if (c.method, c.heating) == ("heat_dissipation", "continuous")
+    }
     if not steps or steps[0].settings["method"] == "species":
         return
     general = probed if steps[0].settings["method"] == "general" else probed - own
@@ -157,6 +164,41 @@ def notes_of_lives(lives, evidence):
         meaning = quality.FLAGS[flag].meaning
         nights = _nights(evidence.get(NIGHTS_OF.get(flag)), probes)
         yield (f"{_listed(set(probes))}: hardly any record can be used: {meaning} ({flag}){nights}")
+    yield from _ageing(evidence.get("ageing_controls"))
+
+
+def _ageing(controls):
+    """What the run made of the age of its heat dissipation probes."""
+    if controls is None:
+        return
+    for verdict, rows in controls.groupby("verdict", sort=False):
+        old = rows[rows["oldest_age_d"] > OLD_D]
+        if rows["applied"].any():
+            yield f"sensitivity lost with the age of heat dissipation probes: {verdict}"
+        elif len(old):
+            yield f"{_listed(set(old['probe']))}: installed for more than {OLD_D} days; {verdict}"
+
+
+def notes_of_methods(compared, left_out):
+    """Notes on the methods run beside the recipe's own, by stage: what each made of the season.
+
+    compared : `Compared` or None; left_out : (chain, stage, method) that the site cannot serve.
+    """
+    stages = {}
+    if compared is not None:
+        rows = compared.stands
+        season = rows[(rows["period"] == "season") & (rows["species"] == ALL)]
+        for (stage, stand), group in season.groupby(["stage", "stand"], sort=False):
+            told = [
+                f"{row.method} {row.difference_mm:+.1f} of {row.recipe_mm:.1f} mm"
+                for row in group.itertuples()
+            ]
+            stages.setdefault(stage, []).append(f"{stand} {', '.join(told)}")
+    for stage, told in stages.items():
+        yield f"other methods of {stage} on the same days: {'; '.join(told)} (methods_beside.csv)"
+    if left_out:
+        names = ", ".join(f"{stage} {method}" for _, stage, method in left_out)
+        yield f"methods the site has no data for, not run beside the others: {names}"
 
 
 def _nights(nights, probes):

@@ -9,6 +9,7 @@ from sapflux.ingest.ledger import conflicts_table, ledger_table, rejected_table
 from sapflux.pipeline import netcdf
 from sapflux.pipeline.identity import file_sha256, identity, write_json
 from sapflux.pipeline.night_columns import night_tables
+from sapflux.pipeline.plan import methods_of
 from sapflux.pipeline.tables import write_csv
 
 # Every file a run may write, and what it says of it on screen.
@@ -19,8 +20,17 @@ FILES = {
     "water_year.csv": "by water year",
     "tree_daily.csv": "water use of each instrumented tree",
     "installations.csv": "the life of each probe",
+    "power_off_nights.csv": "every night with a heater off on purpose",
     "zero_flow_nights.csv": "every night looked at for the baseline",
-    "zero_offset_nights.csv": "every night looked at for the zero offset",
+    "diffusivity_nights.csv": "every night looked at for the diffusivity in place",
+    "zero_ratio_nights.csv": "every night looked at for the ratio at zero flow",
+    "zero_flow_nights_beside.csv": "the same by the methods run beside",
+    "zero_ratio_nights_beside.csv": "likewise",
+    "diffusivity_nights_beside.csv": "likewise",
+    "power_off_nights_beside.csv": "likewise",
+    "methods_beside.csv": "what other methods of a stage make of the stands",
+    "probe_methods_beside.csv": "and of each probe, by month",
+    "ageing_controls.csv": "older and newer probes compared, and the sensitivity lost with age",
     "ledger.csv": "what became of every line",
     "rejected.csv": "lines that gave no data, and why",
     "conflicts.csv": "cells that two downloads give differently",
@@ -72,7 +82,7 @@ def _frames(found):
     series = list(found.logs.values())
     return {
         **found.tables,
-        **night_tables(found.evidence),
+        **night_tables(found.evidence, found.beside.evidence if found.beside else ()),
         "ledger": ledger_table(*series),
         "rejected": rejected_table(*series),
         "conflicts": conflicts_table(*series),
@@ -126,6 +136,7 @@ def _record(site, recipe, found, identity_of_run, folder):
         "history": found.history,
         "inputs": input_hashes(found),
         "tables": table_hashes(site),
+        "unverified": recipe.unverified([*methods_of(site), "scaling"]),
         "seeds": {},
         "notes": found.notes,
         "written": {name: FILES.get(name, "signals at the native step") for name in written},

@@ -2,7 +2,7 @@
 
 import inspect
 import tomllib
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from importlib import resources
 from pathlib import Path
 from types import MappingProxyType
@@ -11,10 +11,13 @@ from typing import Literal, get_args, get_origin
 import sapflux.correction
 import sapflux.scaling
 from sapflux.errors import Fault, RecipeError, nearest
+from sapflux.pipeline.agreement import disagreements, followed
 from sapflux.pipeline.join import Joined
 from sapflux.scaling.completeness import Completeness
 from sapflux.stage import CHAINS, REGISTRY, Stage
 
+BESIDE = "beside"  # key of a step: methods to run beside its own
+ALL = "all"
 JOIN = {"least_coverage": (0.75, 0.0, 1.0)}  # default, lowest, highest
 # The two parts of a recipe that are no stages, and where their settings are explained.
 PARTS = {"join": Joined, "totals": Completeness}
@@ -22,16 +25,26 @@ PARTS = {"join": Joined, "totals": Completeness}
 
 @dataclass(frozen=True)
 class Step:
-    """One stage of a chain with all its settings."""
+    """One stage of a chain with all its settings.
+
+    beside : other values of its setting `method`, run side by side with the recipe's own.
+    """
 
     stage: Stage
     settings: MappingProxyType
     number: int  # place in its list, from 1
+    beside: tuple = ()
 
     def line(self):
         """The step as one history line, every setting spelled out."""
         spelled = ", ".join(f"{name}={value!r}" for name, value in self.settings.items())
         return f"{self.stage.chain}: {self.stage.name}({spelled})"
+
+    def plain(self):
+        """The step as a recipe would write it, every setting spelled out."""
+        listed = ALL if self.beside == (ALL,) else list(self.beside)
+        beside = {BESIDE: listed} if self.beside else {}
+        return {"stage": self.stage.name, **self.settings, **beside}
 
 
 @dataclass(frozen=True)
@@ -47,10 +60,7 @@ class Recipe:
 
     def resolved(self):
         """The recipe as plain data: what `run.json` keeps and the identity is made of."""
-        steps = {
-            chain: [{"stage": step.stage.name, **step.settings} for step in steps]
-            for chain, steps in self.chains.items()
-        }
+        steps = {chain: [step.plain() for step in steps] for chain, steps in self.chains.items()}
         return {
             "name": self.name,
             "title": self.title,
@@ -58,6 +68,35 @@ class Recipe:
             "join": dict(self.join),
             "totals": dict(self.totals),
         }
+
+    def alone(self):
+        """The recipe with nothing run beside its own methods."""
+        chains = {
+            chain: tuple(replace(step, beside=()) for step in steps)
+            for chain, steps in self.chains.items()
+        }
+        return replace(self, chains=MappingProxyType(chains))
+
+    def with_method(self, chain, stage, method):
+        """The recipe with another method of one stage, and nothing run beside it."""
+        other = self.alone()
+        steps = tuple(
+            replace(step, settings=MappingProxyType({**step.settings, "method": method}))
+            if step.stage.name == stage
+            else step
+            for step in other.chains[chain]
+        )
+        return replace(other, chains=MappingProxyType({**other.chains, chain: followed(steps)}))
+
+    def unverified(self, chains):
+        """Published values that its stages in `chains` rest on, known from memory only."""
+        values = [
+            value
+            for chain in chains
+            for step in self.chains[chain]
+            for value in step.stage.unverified
+        ]
+        return list(dict.fromkeys(values))
 
 
 def recipe_folders():
@@ -126,6 +165,8 @@ def read_recipe(raw, where, name):
             if (step := _step(table, chain, number, where, faults))
         )
         faults += _order_faults(chains[chain], where)
+        faults += disagreements(chains[chain], steps, where)
+        chains[chain] = followed(chains[chain])
     if not any(chains.values()) and not faults:
         faults.append(Fault(where, "the recipe has no stage", "List stages under [[scaling]], ..."))
     recipe = Recipe(
@@ -158,7 +199,7 @@ def _step(table, chain, number, where, faults):
     before = len(faults)
     settings = stage.defaults()
     for key, value in table.items():
-        if key == "stage":
+        if key in ("stage", BESIDE):
             continue
         if key not in stage.settings:
             faults.append(
@@ -177,7 +218,34 @@ def _step(table, chain, number, where, faults):
         faults.append(
             Fault(here, f"stage {name!r} needs the setting {key!r}", "It has no default: state it.")
         )
-    return Step(stage, MappingProxyType(settings), number) if len(faults) == before else None
+    beside = _beside(table, stage, settings, here, faults)
+    if len(faults) > before:
+        return None
+    return Step(stage, MappingProxyType(settings), number, beside)
+
+
+def _beside(table, stage, settings, here, faults):
+    """Methods to run beside the step's own, as listed; "all" stays for the site to settle."""
+    listed = table.get(BESIDE, [])
+    parameter = stage.settings.get("method")
+    if BESIDE in table and parameter is None:
+        faults.append(Fault(here, f"stage {stage.name!r} has one method", f"Remove {BESIDE}."))
+        return ()
+    if listed == ALL:
+        return (ALL,)
+    choices = get_args(parameter.annotation) if listed else ()
+    others = [method for method in choices if method != settings["method"]]
+    if not isinstance(listed, list) or not all(method in others for method in listed):
+        faults.append(
+            Fault(
+                here,
+                f"{stage.name}: {BESIDE} = {listed!r}",
+                f'It takes "{ALL}", or a list of other methods than the step\'s own: '
+                f"{', '.join(others) or 'there is none'}.",
+            )
+        )
+        return ()
+    return tuple(dict.fromkeys(listed))
 
 
 def _fitting(value, parameter, limits):

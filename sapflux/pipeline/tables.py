@@ -11,7 +11,8 @@ import numpy as np
 import pandas as pd
 
 from sapflux import quality
-from sapflux.pipeline.night_columns import NIGHTS
+from sapflux.pipeline.night_columns import NIGHTS, NIGHTS_BESIDE
+from sapflux.pipeline.side_by_side import PROBE_COLUMNS, STAND_COLUMNS
 
 TOTALS = (
     "stand", "species", "start", "end", "transpiration_mm", "lower_mm", "upper_mm",
@@ -31,10 +32,15 @@ COLUMNS = {
         "probe", "installation", "tree", "method", "installed", "removed",
         "records", "usable_fraction",
         "zero_flow_nights", "zero_flow_nights_accepted", "zero_flow_difference_K",
-        "zero_offset_nights", "zero_offset_nights_accepted", "zero_offset_velocity_cm_h",
+        "zero_flow_nights_added", "zero_flow_nights_lost", "zero_flow_admissible",
+        "baseline_amplification",
+        "zero_ratio_nights", "zero_ratio_nights_accepted", "zero_ratio_velocity_cm_h",
+        "window_drift",
         *(f"{name}_fraction" for name in quality.NATIVE),
         "ended",
     ),
+    "methods_beside": STAND_COLUMNS,
+    "probe_methods_beside": PROBE_COLUMNS,
     "ledger": (
         "file", "sha256", "lines", "header", "kept", "duplicate", "conflicting", "rejected",
         "blank", "outside",
@@ -45,13 +51,17 @@ COLUMNS = {
         "other_line",
     ),
     **NIGHTS,
+    **NIGHTS_BESIDE,
 }  # fmt: skip
 DAYS = {"start", "end"}
 WHOLE = {
+    "zero_flow_nights_added", "zero_flow_nights_lost", "zero_flow_admissible",
+    "accepted_if_drier", "accepted_if_wetter", "visited", "rained",
     "trees", "valid", "days", "days_refused", "installation", "records", "zero_flow_nights",
-    "zero_flow_nights_accepted", "zero_offset_nights", "zero_offset_nights_accepted", "lines",
+    "zero_flow_nights_accepted", "zero_ratio_nights", "zero_ratio_nights_accepted", "lines",
     "header", "kept", "duplicate", "conflicting", "rejected", "blank", "outside", "line",
-    "other_line", "point", "nights", "accepted", "usable",
+    "other_line", "reference_days", "control_installation", "common_days", "pairs", "applied",
+    "point", "nights", "accepted", "usable", "admissible",
 }  # fmt: skip
 DIGITS = {
     "mm": 4,
@@ -60,7 +70,17 @@ DIGITS = {
     "K": 4,
     "h": 4,
     "kPa": 4,
+    "s": 7,
+    "degC": 2,
+    "um": 1,
+    "change": 6,
     "variation": 6,
+    "drift": 4,
+    "amplification": 2,
+    "d": 1,
+    "ratio": 5,
+    "year": 4,
+    "probability": 6,
 }  # by the last part of the name
 AS_WRITTEN = {"value", "other_value"}
 # A spreadsheet runs a cell that begins so as a formula, unless it is a number.

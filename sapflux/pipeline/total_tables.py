@@ -8,22 +8,16 @@ from sapflux.scaling.days import Calendar, stand_days
 from sapflux.site import facts
 
 
-def total_tables(site, recipe, found, weather):
-    """Tables of totals by name; empty where the recipe scales to neither trees nor stands."""
-    place = site.position
-    calendar = Calendar(
-        interval_s=place.common_step_min * 60,
-        utc_offset_h=place.utc_offset_h,
-        latitude_deg=place.latitude_deg,
-        longitude_deg=place.longitude_deg,
-        water_year_start=place.water_year_start,
-    )
-    rules = Completeness(**recipe.totals)
+def total_tables(site, recipe, trees, days):
+    """Tables of totals by name; empty where the recipe scales to neither trees nor stands.
+
+    trees : the scaled trees, or None; days : as `days_of` gives them, or None.
+    """
     tables = {}
-    if found.trees is not None:
-        tables["tree_daily"] = totals.tree_daily(found.trees, calendar, rules)
-    if found.stand is not None:
-        days = _days(site, found, weather, calendar, rules)
+    if trees is not None:
+        rules = Completeness(**recipe.totals)
+        tables["tree_daily"] = totals.tree_daily(trees, calendar_of(site), rules)
+    if days is not None:
         tables["daily"] = totals.daily(days)
         tables["monthly"] = totals.monthly(days)
         tables["season"] = totals.season(days)
@@ -31,17 +25,31 @@ def total_tables(site, recipe, found, weather):
     return tables
 
 
-def _days(site, found, weather, calendar, rules):
+def calendar_of(site):
+    """How the site counts its days."""
+    place = site.position
+    return Calendar(
+        interval_s=place.common_step_min * 60,
+        utc_offset_h=place.utc_offset_h,
+        latitude_deg=place.latitude_deg,
+        longitude_deg=place.longitude_deg,
+        water_year_start=place.water_year_start,
+    )
+
+
+def days_of(site, recipe, stand, weather):
+    """Every day of a scaled stand, judged by the recipe's rules of completeness: `Days`."""
+
     def in_leaf(ends):
         laid = facts.stand_facts(site, ends)["in_leaf"]
         return laid.transpose("stand_species", "time").values
 
-    ground = facts.stand_facts(site, found.stand["time"].values[:1])["sapwood_per_ground"]
+    ground = facts.stand_facts(site, stand["time"].values[:1])["sapwood_per_ground"]
     return stand_days(
-        found.stand,
+        stand,
         ground.values,
-        calendar,
-        rules,
+        calendar_of(site),
+        Completeness(**recipe.totals),
         in_leaf=in_leaf,
         vapour_pressure_deficit=_deficit(weather),
     )

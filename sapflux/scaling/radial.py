@@ -1,12 +1,12 @@
 """Sap flow of a whole stem from the points along one needle."""
 
-from itertools import pairwise
 from typing import Literal
 
 import numpy as np
 
 from sapflux import quality
 from sapflux.scaling.annuli import point_weights
+from sapflux.site.laying import as_rows, unchanged_spans
 from sapflux.stage import stage
 
 
@@ -104,7 +104,7 @@ def _integrated(flux, filled, weights):
 
 def _weights(facts, sizes, method, uncovered):
     """(probe, point, time) or (probe, point, 1), found once for each set of facts that occurs."""
-    radius, depth, begin, end, profile = (_laid(fact, sizes) for fact in facts)
+    radius, depth, begin, end, profile = (as_rows(fact, sizes) for fact in facts)
     relative = facts[4]["relative_depth"].values if profile is not None else None
     given = [part for part in (radius, depth, begin, end, profile) if part is not None]
     length = max(part.shape[-1] for part in given)
@@ -112,7 +112,7 @@ def _weights(facts, sizes, method, uncovered):
     known = {}
     for probe in range(sizes["probe"]):
         own = [part[probe] for part in given]
-        for first, last in _spans(own, length):
+        for first, last in unchanged_spans(own, length):
             now = [part[:, min(first, part.shape[-1] - 1)] for part in own]
             key = b"".join(part.tobytes() for part in now)
             if key not in known:
@@ -122,29 +122,3 @@ def _weights(facts, sizes, method, uncovered):
                 )  # fmt: skip
             weights[probe, :, first:last] = known[key][:, np.newaxis]
     return weights
-
-
-def _laid(fact, sizes):
-    """A fact as (probe, anything, time or 1); None stays None."""
-    if fact is None:
-        return None
-    last = [dim for dim in ("point", "relative_depth") if dim in fact.dims]
-    ordered = fact.transpose("probe", *last, ..., missing_dims="ignore")
-    values = np.asarray(ordered.values, dtype=float)
-    if "time" not in ordered.dims:
-        values = values[..., np.newaxis]
-    if not last:
-        values = values[:, np.newaxis, :]
-    return np.ascontiguousarray(np.broadcast_to(values, (sizes["probe"], *values.shape[1:])))
-
-
-def _spans(own, length):
-    """[first, last) of the records over which no fact changes."""
-    changes = np.zeros(length, dtype=bool)
-    for part in own:
-        if part.shape[-1] > 1:
-            old, new = part[:, :-1], part[:, 1:]
-            same = (old == new) | (np.isnan(old) & np.isnan(new))
-            changes[1:] |= ~same.all(axis=0)
-    cuts = [0, *np.flatnonzero(changes).tolist(), length]
-    return list(pairwise(cuts))

@@ -2,12 +2,14 @@
 
 from sapflux.site import (
     checks_channels,
+    checks_heating,
     checks_logs,
     checks_plots,
     checks_probes,
     checks_records,
     checks_species,
     checks_surveys,
+    checks_traces,
     checks_trees,
     checks_wood,
 )
@@ -15,7 +17,9 @@ from sapflux.site import (
 CHECKS = (
     *checks_logs.CHECKS,
     *checks_channels.CHECKS,
+    *checks_traces.CHECKS,
     *checks_probes.CHECKS,
+    *checks_heating.CHECKS,
     *checks_trees.CHECKS,
     *checks_plots.CHECKS,
     *checks_surveys.CHECKS,

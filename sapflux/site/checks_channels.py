@@ -1,7 +1,7 @@
 """`channels.csv`: what must fit together."""
 
 from sapflux.errors import Fault, nearest
-from sapflux.schema import QUANTITIES, SIGNALS
+from sapflux.schema import QUANTITIES, SIGNALS, TRACES
 from sapflux.site.reading import backwards, clashes, day, overlap
 from sapflux.units import accepted
 
@@ -15,7 +15,9 @@ LISTED = {
 # Signals that give a heat ratio by themselves, and those that do with others, by needle.
 ALONE = {"heat_ratio", "log_heat_ratio", "logged_velocity"}
 RISES = ("rise_downstream", "rise_upstream")
-TEMPERATURES = tuple(s for s in SIGNALS["heat_ratio"] if s.startswith("temperature"))
+TEMPERATURES = tuple(
+    s for s in SIGNALS["heat_ratio"] if s.startswith("temperature") and s not in TRACES
+)
 METHODS = {signal: method for method, signals in SIGNALS.items() for signal in signals}
 
 
@@ -153,8 +155,8 @@ def set_faults(reading):
                 held[0][0],
                 f"point {point} of probe {probe!r} has {', '.join(given)}{time} and no "
                 f"{', '.join(_missing(signals))}",
-                "A point needs both rises, all four temperatures, heat_ratio, log_heat_ratio or "
-                "logged_velocity, for the same time.",
+                "A point needs both rises, all four temperatures, both temperature traces, "
+                "heat_ratio, log_heat_ratio or logged_velocity, for the same time.",
             )
             break  # the others have the same reason
 
@@ -167,16 +169,21 @@ def _spans(rows):
 
 def _make_a_ratio(signals):
     """Whether signals make a ratio: one alone, or rise or two temperatures of either needle."""
-    return bool(signals & ALONE) or all(
-        f"rise_{needle}" in signals
-        or {f"temperature_before_{needle}", f"temperature_after_{needle}"} <= signals
-        for needle in ("downstream", "upstream")
+    return (
+        bool(signals & ALONE)
+        or signals.issuperset(TRACES)
+        or all(
+            f"rise_{needle}" in signals
+            or {f"temperature_before_{needle}", f"temperature_after_{needle}"} <= signals
+            for needle in ("downstream", "upstream")
+        )
     )
 
 
 def _missing(signals):
     """What signals that make no ratio lack of the set that they have most of."""
-    nearest_set = max(RISES, TEMPERATURES, key=lambda whole: len(signals.intersection(whole)))
+    sets = (RISES, TEMPERATURES, TRACES)
+    nearest_set = max(sets, key=lambda whole: len(signals.intersection(whole)))
     return [signal for signal in nearest_set if signal not in signals]
 
 

@@ -203,6 +203,14 @@ def pair_faults(reading):
                     f"heated probe {row.heated!r} in {trees[1]!r}",
                     "The gradient of another stem says nothing: pair probes of one stem.",
                 )
+    for where, row, former, _ in clashes(
+        reading.rows("pairs"), lambda r: r.heated, lambda r: (r.from_, r.to)
+    ):
+        yield Fault(
+            where,
+            f"heated probe {row.heated!r} has another unheated pair for the same time in {former}",
+            "End one where the other begins.",
+        )
 
 
 CHECKS = (row_faults, name_faults, tree_faults, pair_faults)

@@ -111,7 +111,7 @@ def _water_faults(where, row):
 
 
 def wound_faults(reading):
-    """Wound widths of nothing known, or that no drill makes."""
+    """Wound widths of nothing known, that no drill makes, or that grow by half a time course."""
     rows = list(reading.rows("wounds"))
     for where, row, former in repeats(rows, lambda r: (r.probe, r.tree, r.species, r.date)):
         yield Fault(
@@ -129,6 +129,32 @@ def wound_faults(reading):
                 "Give the width of wounded wood across the needles in mm: it lies between "
                 "0.5 and 6.",
             )
+        yield from _course_faults(where, row)
+
+
+def _course_faults(where, row):
+    final, constant = row.final_width_mm, row.time_constant_d
+    if (final is None) != (constant is None):
+        given, missing = "final_width_mm", "time_constant_d"
+        if final is None:
+            given, missing = missing, given
+        yield Fault(
+            where,
+            f"the row has {given} and no {missing}",
+            "Give both for a wound that grows by a time course, or neither.",
+        )
+    elif final is not None and final < row.width_mm:
+        yield Fault(
+            where,
+            f"final_width_mm {final:g} is less than width_mm {row.width_mm:g}",
+            "A wound grows: give in width_mm the width at `date`, in final_width_mm the last one.",
+        )
+    if final is not None and final > WOUNDS[1]:
+        yield Fault(
+            where,
+            f"final_width_mm is {final:g}",
+            "Give the width of wounded wood across the needles in mm: it lies between 0.5 and 6.",
+        )
 
 
 def profile_faults(reading):
@@ -184,7 +210,7 @@ def calibration_faults(reading):
             f"calibration {row.calibration!r} stands in {former} already",
             "Give each a name of its own.",
         )
-    for where, row, former in repeats(rows, lambda r: (r.species, r.method, r.date)):
+    for where, row, former in repeats(rows, lambda r: (r.species, r.method, r.heating, r.date)):
         yield Fault(
             where,
             f"species {row.species!r} has a calibration for {row.method} of {row.date} in {former} "

@@ -14,6 +14,10 @@ YEAR_DAY_HHMM = "year_day_hhmm"  # the one time format that is no strptime forma
 # Years a logger can have written, both ends within: a stamp outside comes from a clock that lost
 # its date, or from torn text. Source: own judgement.
 YEARS = (1990, 2100)
+# Of a log of temperature traces, rows up to so long before heating and after its start belong to a
+# pulse [s]. Source: own judgement: diffusivity and flow have done their work by then.
+TRACE_BEFORE_S = 60
+TRACE_AFTER_S = 300
 
 
 class Strict(BaseModel):
@@ -131,6 +135,16 @@ class Log(Strict):
     stamp: Literal["end", "start"]  # which end of its interval a stamp marks
     # "utc", "utc+1", "utc-3.5" (fixed offset), or "civil:ZONE" of the IANA time zone table
     clock: Annotated[str, Field(pattern=r"^(utc([+-]\d{1,2}(\.\d+)?)?|civil:[A-Za-z_+\-/0-9]+)$")]
+    # A log of temperature traces has a row every so many seconds around each pulse, stamped with
+    # the moment it was read; interval_min is then the time from pulse to pulse, and heating starts
+    # `pulse_starts_s` after each whole interval of standard time. Blank: no traces.
+    trace_step_s: Annotated[float, Field(ge=1, le=10)] | None = None
+    pulse_starts_s: Annotated[float, Field(ge=0)] = 0.0
+
+    @property
+    def row_s(self):
+        """Seconds from one row to the next."""
+        return round(self.trace_step_s or self.interval_min * 60)
 
     @field_validator("files")
     @classmethod
@@ -161,6 +175,38 @@ class Log(Strict):
                 "Give the minutes from one record to the next, like 10 or 0.5.",
             )
         return value
+
+    @field_validator("trace_step_s")
+    @classmethod
+    def _trace_step_divides_the_minute(cls, value):
+        if value is not None and 60 % value:
+            raise ValueError(
+                f"{value:g} does not divide the minute into whole seconds",
+                "Give the seconds from one row to the next around a pulse, like 1.",
+            )
+        return value
+
+    @model_validator(mode="after")
+    def _traces_are_moments_of_a_pulse(self):
+        if self.trace_step_s is None:
+            if self.pulse_starts_s:
+                raise ValueError(
+                    "pulse_starts_s is given without trace_step_s",
+                    "Give trace_step_s if the log has temperature traces, else neither.",
+                )
+            return self
+        if self.stamp != "end":
+            raise ValueError(
+                "the rows of a log with trace_step_s are moments and have no start",
+                'Set stamp = "end".',
+            )
+        if self.pulse_starts_s >= self.interval_min * 60:
+            raise ValueError(
+                f"pulse_starts_s is {self.pulse_starts_s:g}, and the next interval begins after "
+                f"{self.interval_min * 60:g} s",
+                "Count from the whole interval before the pulse.",
+            )
+        return self
 
     @field_validator("clock")
     @classmethod

@@ -43,6 +43,16 @@ ONE_LOGGER = """\
 # QUESTION: are all these downloads of one logger? They have the same columns; if not, give each
 # logger a section of its own, here and in channels.csv.
 """
+# Rows closer than this are taken for temperature traces around heat pulses, until it is answered.
+LONGEST_TRACE_STEP_S = 10
+TRACES = """\
+# QUESTION: are the rows, {step:g} s apart, temperature traces around heat pulses? If not, take
+# trace_step_s away.
+trace_step_s = {step:g}
+# QUESTION: how many minutes from pulse to pulse, and does heating start at each whole interval?
+# interval_min = 30
+# pulse_starts_s = 0
+"""
 
 
 def write_starter(folder):
@@ -209,7 +219,9 @@ def _draft_toml(logs):
             + f"files = {_toml(files)}  # or a pattern that later downloads match, too\n"
             f"layout = {_toml(layout_name)}\n"
         )
-        if finding.interval_min is None:
+        if finding.interval_min is not None and finding.interval_min * 60 <= LONGEST_TRACE_STEP_S:
+            parts.append(TRACES.format(step=finding.interval_min * 60))
+        elif finding.interval_min is None:
             parts.append(
                 "# QUESTION: how many minutes from one record to the next?\n# interval_min =\n"
             )

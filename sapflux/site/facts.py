@@ -8,8 +8,8 @@ in every block. NaN where the site does not say.
 import numpy as np
 
 from sapflux.errors import Fault, SiteError
-from sapflux.site import dated, inventory, laying
-from sapflux.site.installations import episodes, installation_numbers, latest_begun
+from sapflux.site import dated, inventory, laying, spans
+from sapflux.site.installations import episodes, heating, installation_numbers, latest_begun
 from sapflux.site.sources import CALIBRATED, INSTALLED, SAMPLED
 from sapflux.units import MM, factor_of_key
 
@@ -164,7 +164,7 @@ def _makers(site, records, point_count):
         )
 
     def of_calibration(column):
-        return lambda: (("probe",), _calibrated(site, records, column))
+        return lambda: _calibrated(site, records, column)
 
     return {
         **{name: of_row(column) for name, column in INSTALLED.items()},
@@ -172,8 +172,15 @@ def _makers(site, records, point_count):
         "radial_to": of_points(lambda row: np.array(row.depth_to_mm) * MM),
         "contact_fraction": of_points(lambda row: _contact(row, depth[row.probe])),
         **{name: of_wood(column) for name, column in SAMPLED.items()},
-        "wound_width": lambda: laying.by_date(records, _wounds(site, records), MM),
+        "wound_width": lambda: laying.by_date(records, _wounds(site, records), MM, dated.width_at),
         **{name: of_calibration(column) for name, column in CALIBRATED.items()},
+        "installed_age": lambda: (("probe", "time"), _ages(site, records)),
+        "probe_tree": lambda: (("probe",), np.array(records.trees, dtype=str)),
+        "probe_stratum": lambda: (("probe",), np.array(_strata(site, records), dtype=str)),
+        "paired": lambda: spans.paired(site, records),
+        "power_off": lambda: spans.power_off(site, records),
+        "visited": lambda: spans.visited(site, records),
+        "at_rest": lambda: spans.at_rest(site, records),
         "xylem_radius": lambda: (("probe",), _radii(site, records)),
         "sapwood_depth": lambda: (("probe",), np.array([depth[p] for p in records.probes])),
         "relative_profile": lambda: _profiles(site, records),
@@ -182,10 +189,25 @@ def _makers(site, records, point_count):
 
 def _wounds(site, records):
     installed = [[row.installed.date() for row in rows] for rows in records.installations]
-    return lambda place, number: dated.wound_nodes(
+    return lambda place, number: dated.wound_courses(
         site, records.probes[place], number, installed[place],
         records.trees[place], records.species[place],
     )  # fmt: skip
+
+
+def _ages(site, records):
+    """Seconds from the installation begun last to the middle of each record."""
+    second = np.timedelta64(1, "s")
+    begun = [
+        np.array([site.utc(row.installed) for row in rows])[number]
+        for rows, number in zip(records.installations, records.number, strict=True)
+    ]
+    return (records.middles - np.array(begun)) / second
+
+
+def _strata(site, records):
+    names = labels_of_trees(site, records.trees)
+    return [f"{stand}/{kind}" for stand, kind in zip(names["stand"], names["species"], strict=True)]
 
 
 def _contact(row, sapwood_depth):
@@ -201,16 +223,20 @@ def _contact(row, sapwood_depth):
 
 
 def _calibrated(site, records, column):
-    """Of each probe's species the register's latest row for heat dissipation."""
+    """Of each probe's species the register's latest row for heat dissipation heated as it is."""
     latest, unit = {}, factor_of_key(column)
     for row in site.table("calibrations"):
         if row.method == "heat_dissipation":
-            known = latest.get(row.species)
-            latest[row.species] = row if known is None or row.date > known.date else known
-    return np.array([
-        laying.as_number(getattr(latest[name], column)) * unit if name in latest else np.nan
-        for name in records.species
-    ])  # fmt: skip
+            key = (row.species, row.heating)
+            known = latest.get(key)
+            latest[key] = row if known is None or row.date > known.date else known
+    species = dict(zip(records.probes, records.species, strict=True))
+
+    def value_of(row):
+        own = latest.get((species[row.probe], heating(row)))
+        return np.nan if own is None else laying.as_number(getattr(own, column)) * unit
+
+    return laying.by_installation(records, value_of, ("probe",))
 
 
 def _radii(site, records):

@@ -13,6 +13,11 @@ def episodes(site, probe):
     return sorted(rows, key=lambda row: row.installed)
 
 
+def heating(row):
+    """How a row of `probes.csv` says that it is heated, in the words of `calibrations.csv`."""
+    return "continuous" if row.heating_on_min is None else "intermittent"
+
+
 def installed_span(site, probes):
     """(first installation, last removal) of these probes, datetime64[s] UTC; no end: year 9999."""
     rows = [row for row in site.table("probes") if row.probe in set(probes)]

@@ -1,6 +1,7 @@
 """How values are laid on records: by installation, by date, as named arrays."""
 
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 import xarray as xr
@@ -43,14 +44,17 @@ def by_installation(records, value_of, dims):
     return (*dims, "time"), np.moveaxis(np.array(laid), 1, -1)
 
 
-def by_date(records, nodes_of, unit):
-    """(dims, values) of dated nodes (place of probe, installation) -> nodes, in `unit` of SI."""
+def by_date(records, nodes_of, unit, value_at=dated.line_at):
+    """(dims, values) of dated nodes (place of probe, installation) -> nodes, in `unit` of SI.
+
+    value_at : nodes, moments -> values.
+    """
     lines = {}  # probes of a species share their nodes
 
     def line(place, number):
         nodes = nodes_of(place, number)
         if nodes not in lines:
-            lines[nodes] = dated.line_at(nodes, records.middles) * unit
+            lines[nodes] = value_at(nodes, records.middles) * unit
         return lines[nodes]
 
     values = np.empty(records.number.shape)
@@ -83,3 +87,36 @@ def named(name, dims, values):
     if "relative_depth" in dims:
         array = array.assign_coords(relative_depth=RELATIVE_DEPTHS)
     return array
+
+
+def as_rows(fact, sizes):
+    """A laid fact as an array (probe, anything, time or 1), for stages that go probe by probe.
+
+    fact : DataArray (probe,), (probe, point) or (probe, relative_depth), or with time; None stays
+    None. sizes : sizes of the records' dims.
+    """
+    if fact is None:
+        return None
+    last = [dim for dim in ("point", "relative_depth") if dim in fact.dims]
+    ordered = fact.transpose("probe", *last, ..., missing_dims="ignore")
+    values = np.asarray(ordered.values, dtype=float)
+    if "time" not in ordered.dims:
+        values = values[..., np.newaxis]
+    if not last:
+        values = values[:, np.newaxis, :]
+    return np.ascontiguousarray(np.broadcast_to(values, (sizes["probe"], *values.shape[1:])))
+
+
+def unchanged_spans(own, length):
+    """[first, last) of the records over which no fact changes.
+
+    own : arrays (..., time or 1) of one probe; length : number of records.
+    """
+    changes = np.zeros(length, dtype=bool)
+    for part in own:
+        if part.shape[-1] > 1:
+            old, new = part[:, :-1], part[:, 1:]
+            same = (old == new) | (np.isnan(old) & np.isnan(new))
+            changes[1:] |= ~same.all(axis=0)
+    cuts = [0, *np.flatnonzero(changes).tolist(), length]
+    return list(pairwise(cuts))

@@ -9,6 +9,8 @@ INSTALLED = {  # of probes.csv
     "pulse_length": "pulse_length_s",
     "embedded_diffusivity": "embedded_diffusivity_cm2_s",
     "embedded_spacing": "embedded_spacing_mm",
+    "heating_on": "heating_on_min",
+    "heating_off": "heating_off_min",
 }
 SAMPLED = {  # of wood.csv
     "given_diffusivity": "diffusivity_cm2_s",
@@ -34,6 +36,13 @@ SOURCES = {
     **{fact: ((("probes", column),),) for fact, column in INSTALLED.items()},
     **{fact: ((("wood", column),),) for fact, column in SAMPLED.items()},
     "wound_width": ((("wounds", "width_mm"),),),
+    "installed_age": ((("probes", "installed"),),),
+    "probe_tree": ((("probes", "tree"),),),
+    "probe_stratum": ((("trees", "species"),),),
+    "paired": ((("pairs", "heated"),),),
+    "power_off": ((("references", "kind"),),),
+    "visited": ((("visits", "arrival"),),),
+    "at_rest": ((("references", "kind"),),),
     **{fact: ((("calibrations", column),),) for fact, column in CALIBRATED.items()},
     "xylem_radius": ((("surveys", "diameter_cm"),), (("trees", "diameter_cm"),)),
     "sapwood_depth": SAPWOOD,
@@ -42,6 +51,9 @@ SOURCES = {
     "sapwood_per_ground": ((("surveys", ""), ("plots", "")),),
     "in_leaf": ((("species", ""),),),
 }
+
+# fact -> kinds of the rows that give it, for facts of tables with rows of several kinds
+KINDS = {"at_rest": ("dormant", "cut"), "power_off": ("power_off",)}
 
 
 def given_facts(site):
@@ -52,7 +64,9 @@ def given_facts(site):
     return {
         fact
         for fact, alternatives in SOURCES.items()
-        if any(all(_is_set(site, *part) for part in parts) for parts in alternatives)
+        if any(
+            all(_is_set(site, *part, KINDS.get(fact)) for part in parts) for parts in alternatives
+        )
     }
 
 
@@ -63,14 +77,17 @@ def source_in_words(fact):
     'cores.csv (sapwood_depth_cm) or species.csv (sapwood_area_a_cm2)'
     >>> source_in_words("sapwood_per_ground")
     'surveys.csv and plots.csv'
+    >>> source_in_words("at_rest")
+    'references.csv (kind dormant or cut)'
     """
+    kinds = f" {' or '.join(KINDS[fact])}" if fact in KINDS else ""
     return " or ".join(
-        " and ".join(f"{table}.csv ({column})" if column else f"{table}.csv"
+        " and ".join(f"{table}.csv ({column}{kinds})" if column else f"{table}.csv"
                      for table, column in parts)
         for parts in SOURCES[fact]
     )  # fmt: skip
 
 
-def _is_set(site, table, column):
-    rows = site.table(table)
+def _is_set(site, table, column, kinds=None):
+    rows = [row for row in site.table(table) if kinds is None or row.kind in kinds]
     return any(getattr(row, column) not in (None, "", ()) for row in rows) if column else bool(rows)

@@ -46,6 +46,10 @@ layout = "table"
 interval_min = 10           # from one record to the next
 stamp = "end"               # whether a stamp marks the "end" or the "start" of its interval
 clock = "utc+1"             # "utc", "utc+1", "utc-3.5", or civil time: "civil:Europe/Vienna"
+# A log of temperature traces, a row every second around each heat pulse, needs this too;
+# interval_min is then the time from pulse to pulse:
+# trace_step_s = 1          # from one row to the next, each stamped with its own moment
+# pulse_starts_s = 0        # seconds from each whole interval to the start of heating
 """
 
 TIMES = "Times are the site's fixed standard time; a blank end is open."
@@ -65,7 +69,8 @@ EXAMPLES = {
     ),
     "probes": (
         ("One row an installation. method: heat_dissipation, heat_ratio or unheated_pair. Depths",
-         "are below cambium, one for each point, outermost first, parted by blanks: 0 20 / 20 40."),
+         "are below cambium, one for each point, outermost first, parted by blanks: 0 20 / 20 40.",
+         "Needles heated in cycles have heating_on_min and heating_off_min."),
         ({"probe": "P01", "tree": "A01", "method": "heat_dissipation", "height_m": "1.3",
           "azimuth_deg": "0", "depth_from_mm": "0", "depth_to_mm": "20",
           "needle_length_mm": "20", "installed": "2026-04-15 12:00"},),
@@ -118,12 +123,15 @@ EXAMPLES = {
           "water_content": "1.3"},),
     ),
     "wounds": (
-        ("Widths of wounded wood across the needles, of a probe, a tree or a species.",),
+        ("Widths of wounded wood across the needles, of a probe, a tree or a species. With",
+         "final_width_mm and time_constant_d it grows from width_mm at date on, as",
+         "final - (final - width) * exp(-days / time constant)."),
         ({"#": "", "probe": "P02", "date": "2026-10-20", "width_mm": "2.0",
           "source": "measured at removal"},),
     ),
     "calibrations": (
-        ("Own calibrations: flux density = factor * flow index ^ exponent.",),
+        ("Own calibrations: flux density = factor * flow index ^ exponent. heating: continuous, or",
+         "intermittent for needles heated in cycles."),
         ({"#": "", "calibration": "spruce-lab", "species": "spruce",
           "method": "heat_dissipation", "factor_g_m2_s": "119", "exponent": "1.23",
           "lowest_index": "0.05", "highest_index": "0.9", "source": "cut segments, laboratory",

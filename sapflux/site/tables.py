@@ -86,7 +86,9 @@ class Probe(Row):
     window_from_s: NotNegative | None = None
     window_to_s: Positive | None = None
     heater_resistance_ohm: Positive | None = None
-    heating_on_min: Positive | None = None  # of a heating cycle; blank: heated without a break
+    # of a heating cycle, counted from the full hour and begun with heating, unless heater_state is
+    # logged; blank: heated without a break
+    heating_on_min: Positive | None = None
     heating_off_min: Positive | None = None
     embedded_diffusivity_cm2_s: Positive | None = None
     embedded_spacing_mm: Positive | None = None

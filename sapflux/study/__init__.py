@@ -1,1 +1,1 @@
-"""Everything that runs the pipeline more than once: rehearsals on known truth."""
+"""What works on the pipeline or for it: rehearsals on known truth, calibrations of its own."""

@@ -15,6 +15,7 @@ from sapflux.site.load import load_site
 from sapflux.study.substitution import REST, ROUNDS, known_truth
 from sapflux.virtual.copy import write_copy
 from sapflux.virtual.faults import fault_table
+from sapflux.virtual.given_table import read_weather
 from sapflux.virtual.truth import stand_design, stand_mm
 
 DAYS_A_YEAR = 365
@@ -44,18 +45,23 @@ class Rehearsal:
 
 
 def rehearse(path, out, *, seed=1, years=None, days=None, recipe="stand_water_use",
-             knowledge="estimated", **options):  # fmt: skip
+             knowledge="estimated", weather=None, **options):  # fmt: skip
     """Write a virtual copy of a site, run the pipeline on it, and compare with its truth.
 
     path : site folder, a plan without logs is enough; out : folder for the copy, its run and the
     reports; seed : of all that is drawn; years : length, None is one growing season; days : the
-    same in days; knowledge : "estimated", what a crew would know, or "exact"; options : of the
-    forward model, see `sapflux.virtual.copy.write_copy` (faults, wound, azimuth, weather, ...). A
-    former rehearsal of the same seed is replaced.
+    same in days; knowledge : "estimated", what a crew would know, or "exact"; weather : a `Weather`
+    or the path of a table (`sapflux.virtual.given_table.WeatherRow`) whose whole days are the
+    period, None for a stochastic one; options : of the forward model, see
+    `sapflux.virtual.copy.write_copy` (faults, wound, azimuth, gradients). A former rehearsal of the
+    same seed is replaced.
 
     Raises what loading, checking and running a site raise.
     """
     site = load_site(path)
+    table = Path(weather) if isinstance(weather, str | Path) else None
+    if table is not None:
+        weather = read_weather(table, site)
     folder = Path(out) / site.key / f"seed_{seed}_{knowledge}"
     length = years * DAYS_A_YEAR if years else days
     if (folder / MARK).is_file():
@@ -63,9 +69,10 @@ def rehearse(path, out, *, seed=1, years=None, days=None, recipe="stand_water_us
     folder.mkdir(parents=True, exist_ok=True)
     (folder / MARK).touch()
     truth = write_copy(site, folder / site.key, seed=seed, days=length, knowledge=knowledge,
-                       **options)  # fmt: skip
-    run, first = run_and_keep(folder / site.key, recipe=recipe, out=folder / "run")
-    copy, chosen = load_site(folder / site.key), load_recipe(recipe)
+                       weather=weather, **options)  # fmt: skip
+    run, first = run_and_keep(folder / site.key, recipe=recipe, out=folder / "run",
+                              beside=False)  # fmt: skip
+    copy, chosen = load_site(folder / site.key), load_recipe(recipe).alone()
     stands = stand_errors(truth, run.table("daily"))
     return Rehearsal(
         folder,
@@ -78,7 +85,7 @@ def rehearse(path, out, *, seed=1, years=None, days=None, recipe="stand_water_us
         probe_errors(truth, first.probes, copy.position.common_step_min * 60),
         step_errors(truth, copy, chosen, first),
         truth.left_out,
-        truth.options,
+        truth.options | ({} if table is None else {"weather_table": table.name}),
         fault_frame(truth),
     )
 

@@ -1,9 +1,9 @@
 """The pipeline with the truth in place of what a stage made: what each step adds to the error.
 
 Steps are replaced from the front: first the baseline is the true one, then what the needles read,
-then all of heat dissipation, then the heat ratio as well, then the flow of the trees. What a
-replacement takes from the error is the contribution of the steps it covers; what is left after the
-last belongs to the stand.
+then what they would read if they were cooled evenly, then all of heat dissipation, then the heat
+ratio as well, then the flow of the trees. What a replacement takes from the error is the
+contribution of the steps it covers; what is left after the last belongs to the stand.
 """
 
 import numpy as np
@@ -11,12 +11,13 @@ import numpy as np
 from sapflux.ingest.series import Series, on_records
 
 # What is known in each round, and the name of the steps whose error the round takes away. Needles
-# average unevenly cooled wood: no step corrects that yet, so it is told by itself.
-NEEDLES = "uneven cooling along the needles"
+# average unevenly cooled wood: what their correction leaves of that is told by itself.
+NEEDLES = "sapwood_contact: what is left of uneven cooling along the needles"
 ROUNDS = (
     ("zero_flow_difference", {"zero_flow"}),
-    ("other steps of heat dissipation", {"zero_flow", "needles"}),
-    (NEEDLES, {"zero_flow", "heat_dissipation"}),
+    ("signal of heat dissipation: conversion, gradient, noise", {"zero_flow", "signal"}),
+    (NEEDLES, {"zero_flow", "needles"}),
+    ("calibration of heat dissipation", {"zero_flow", "heat_dissipation"}),
     ("heat ratio", {"zero_flow", "heat_dissipation", "heat_ratio"}),
     (
         "probe_flow and tree_flow, faces of the trees",
@@ -29,8 +30,9 @@ REST = "sapwood of the stand, gaps and totals"
 def known_truth(truth, parts):
     """A function (chain, cube) for `compute`: the true values of those parts.
 
-    truth : a virtual site's truth; parts : of "zero_flow", "needles" (flux density as evenly
-    cooled needles would have to be to read the same), "heat_dissipation", "heat_ratio", "trees".
+    truth : a virtual site's truth; parts : of "zero_flow", "signal" (what the needles read before
+    sapwood_contact), "needles" (what evenly cooled ones would read, after it),
+    "heat_dissipation", "heat_ratio", "trees".
     """
 
     def known(chain, cube):
@@ -47,11 +49,14 @@ def known_truth(truth, parts):
         if chain == "heat_dissipation" and "zero_flow" in parts:
             zero = _of_points(truth, cube, laid, lambda probe: _zero_flow(truth, probe))
             made["zero_flow_difference"] = {"zero_flow_difference": zero}
-        of_probe = truth.point_flux if chain in parts else None
-        if chain == "heat_dissipation" and "needles" in parts:
-            of_probe = truth.needle_flux
-        if of_probe:
-            flux = _of_points(truth, cube, laid, of_probe)
+            if "signal" in parts:
+                read = _of_points(truth, cube, laid, truth.needle_ratio)
+                made["zero_flow_difference"]["heated_difference"] = zero * read
+            if "needles" in parts:
+                even = _of_points(truth, cube, laid, truth.even_ratio)
+                made["sapwood_contact"] = {"heated_difference": zero * even}
+        if chain in parts:
+            flux = _of_points(truth, cube, laid, truth.point_flux)
             made["flux_density"] = {"flux_density": flux}
         return made
 

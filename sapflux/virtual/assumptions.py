@@ -60,7 +60,12 @@ DRIFT = (0.010, 0.030)  # share by which it has moved at the end, either sign
 BOW_SPREAD = 0.002  # share, departure from a straight drift half-way
 GRADIENT_SPREAD = 0.03  # K, natural gradient of a stem in full sun
 DISSIPATION_NOISE = (0.005, 0.010)  # K
-HEATER_VOLTAGE = 2.0  # V
+HEATER_VOLTAGE, HEATER_CURRENT = 2.0, 0.1  # V, A: 0.2 W
+
+# Dendrometers.
+SHRINKAGE = 1.5e-6  # m of diameter for each kg m-2 of sapwood that the store lacks
+GROWTH, DAYS_OF_GROWTH = (0.5e-3, 3.0e-3), 150.0  # m in so many days
+DENDROMETER_NOISE = 1e-6  # m
 
 # Heat-ratio probes.
 WOUNDS = (1.75e-3, 2.30e-3)  # m, width of a wound that the site does not know
@@ -75,6 +80,7 @@ BARK_READING = 0.5e-3  # m
 ALLOMETRY_ERROR = 0.08  # of ln factor, one draw a species
 WOUND_READING = 0.05e-3  # m
 WOOD_READING = 0.03  # share, dry density and water content each
+DIFFUSIVITY_READING = 0.03  # share, thermal diffusivity where the site measured it
 
 # Logs of a plan that has none: minutes from record to record.
 INTERVALS = {"heat_dissipation": 10, "unheated_pair": 10, "heat_ratio": 30, "weather": 30}

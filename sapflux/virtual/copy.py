@@ -12,8 +12,8 @@ from sapflux.virtual.copy_channels import common_step, plan_logs
 from sapflux.virtual.copy_files import downloads
 from sapflux.virtual.copy_forest import draw_species, draw_stems, stand_ground
 from sapflux.virtual.copy_needs import check_needs
-from sapflux.virtual.copy_probes import draw_gradients, draw_probes
-from sapflux.virtual.copy_tables import NOT_COPIED, all_tables
+from sapflux.virtual.copy_probes import draw_gradients, draw_probes, installations
+from sapflux.virtual.copy_tables import all_tables, simplifications
 from sapflux.virtual.copy_truth import VirtualTruth, draw_strata
 from sapflux.virtual.faults_draw import check_level, draw_faults
 from sapflux.virtual.faults_tree import with_deaths
@@ -44,7 +44,7 @@ def write_copy(
     knowledge : "exact": the tables hold the truth, with the shape of every tree with probes and
     a core of every stem; "estimated": they hold what a crew would have measured.
     gradients : whether stems have natural temperature gradients; without them what is left of an
-    exact copy's error is needle averaging, sap that flows at night, and noise.
+    exact copy's error is sap that flows at night, and noise.
     weather : `Weather` such as of `given.given_weather`, on a step that all logs' intervals are
     whole multiples of; its whole days are the period, without `first_day` and `days`. None for a
     stochastic season of the site's place.
@@ -103,9 +103,6 @@ def grow_copy(
     species = draw_species(site, seed, weather)
     stems = draw_stems(site, seed, species, azimuth)
     strata = draw_strata(stems, species, weather, soil, lambda stand: stand_ground(site, stand))
-    tables = tuple(
-        f"table {name}: of another time than the copy's" for name in NOT_COPIED if site.table(name)
-    )
     bare = {
         kind for by_species in strata.values() for kind, s in by_species.items()
         if not s.sampled.any()
@@ -117,7 +114,7 @@ def grow_copy(
     options = {
         "wound": wound,
         "azimuth": azimuth,
-        "gradients": gradients,
+        "gradients": "natural" if gradients else "none",
         "night_cooling": assumptions.NIGHT_COOLING,
         "weather": "given" if given else "stochastic",
     }
@@ -130,7 +127,7 @@ def grow_copy(
         stems=tuple(one.stem for one in stems),
         strata=strata,
         carriers={kind: stand_ins[kind] for kind in sorted(bare) if stand_ins[kind]},
-        left_out=plan.left_out + tables,
+        left_out=plan.left_out + tuple(simplifications(site)),
         options=options,
         species=species,
         soil=soil,
@@ -138,6 +135,7 @@ def grow_copy(
         gradients=natural,
         stores={row.id: row.quantity for row in reversed(plan.channels) if row.quantity in STORED},
         known=known,
+        tree_of={row.probe: row.tree for row in installations(site)},
     )
     truth = replace(truth, faults=draw_faults(truth, site, plan, faults))
     return with_deaths(truth), plan

@@ -4,8 +4,10 @@ import re
 from dataclasses import dataclass
 from math import gcd
 
-from sapflux.schema import SIGNALS
+from sapflux.schema import SIGNALS, TRACES
+from sapflux.site import inventory
 from sapflux.site.config import Layout, Log
+from sapflux.site.installations import heating
 from sapflux.site.tables import Channel
 from sapflux.virtual import assumptions
 from sapflux.virtual.copy_needs import SAP_FLOW
@@ -17,8 +19,9 @@ WEATHER = (
 )  # fmt: skip
 SUPPORTED = {
     *(signal for signals in SIGNALS.values() for signal in signals), *WEATHER, "heater_voltage",
-    "heater_state", "battery_voltage", "panel_temperature", "stem_temperature",
-}  # fmt: skip
+    "heater_current", "heater_state", "battery_voltage", "panel_temperature", "stem_temperature",
+    "stem_diameter_change",
+} - {*TRACES}  # fmt: skip
 # What the log of a plan keeps of a probe, in the order of its columns: quantity, unit.
 NEW_SIGNALS = {
     "heat_dissipation": (("heated_emf", "mV"),),
@@ -50,6 +53,8 @@ def plan_logs(site):
     logged = {(row.kind, row.id) for row in kept if row.quantity in _signals()}
     new = []
     for row in installations(site):
+        if heating(row) == "intermittent":
+            left_out.append(f"heating cycle of probe {row.probe}: it is heated without a break")
         if ("probe", row.probe) in logged:
             continue
         log = f"virtual_{'heat_ratio' if row.method == 'heat_ratio' else 'heat_dissipation'}"
@@ -89,6 +94,12 @@ def _signals():
     return {signal for signals in SIGNALS.values() for signal in signals}
 
 
+def grown_stems(site):
+    """Names of the stems that a copy grows and that the site's tables know."""
+    trees = [row.tree for row in site.table("trees")]
+    return {tree for tree in trees if inventory.latest_survey(site, tree) is not None}
+
+
 def _kept(site):
     """(rows, left out): the site's channels that are supported, without dates."""
     rows, left_out = {}, []
@@ -97,12 +108,17 @@ def _kept(site):
         key=lambda r: (r.to is not None, r.from_ is None, -(r.from_.timestamp() if r.from_ else 0)),
     )
     columns, targets = set(), set()
+    grown = grown_stems(site)
     latest = {row.probe: row for row in installations(site)}
     for row in ordered:
         target = (row.kind, row.id, row.point, row.quantity)
         told = f"channel {row.column} of log {row.log}"
-        if row.quantity not in SUPPORTED:
+        if row.quantity in TRACES:
+            left_out.append(f"{told}: the copy has no traces of pulses and logs their mean rises")
+        elif row.quantity not in SUPPORTED:
             left_out.append(f"{told}: {row.quantity} is not supported")
+        elif row.quantity == "stem_diameter_change" and row.id not in grown:
+            left_out.append(f"{told}: nothing tells the diameter of tree {row.id}")
         elif row.kind == "probe" and not _shows(latest[row.id], row):
             left_out.append(f"{told}: {row.quantity} of an earlier installation")
         elif target in targets or (row.log, row.column) in columns:
@@ -156,5 +172,7 @@ def _with_folders(logs):
         folders.add(folder.lower())
         suffix = re.search(r"\.([A-Za-z0-9]{1,5})$", log.files[0])
         pattern = f"raw/{folder}/*.{suffix[1] if suffix else 'csv'}"
-        made[name] = log.model_copy(update={"files": (pattern,)})
+        # A log that held traces has a line a pulse instead.
+        plain = {"files": (pattern,), "trace_step_s": None, "pulse_starts_s": 0.0}
+        made[name] = log.model_copy(update=plain)
     return made

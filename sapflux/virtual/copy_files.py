@@ -4,11 +4,12 @@ from functools import partial
 
 import numpy as np
 
+from sapflux.site.tables import Channel
 from sapflux.virtual import assumptions, faults, faults_clock, faults_files, loggers
 from sapflux.virtual.copy_values import decimals, log_values
 
-ROWS_AT_ONCE = 4000  # bounds the memory of numbers on their way to text
 DAY = np.timedelta64(86400, "s")
+NEW_COLUMN = "lithium_V"
 SHORTEST = 10  # days; a last download of fewer is joined to the one before
 
 
@@ -40,8 +41,11 @@ def downloads(truth, site, plan):
             files.append(
                 faults_files.Download(path, [*header, *data], np.append(blank, ends[rows]))
             )
-        reordered = partial(_reordered, name, values, made, channels, layout)
-        context = faults_files.Context(truth.seed, layout, len(header), end, reordered)
+        changed = {
+            kind: partial(change, name, values, made, channels, layout)
+            for kind, change in PROGRAMS.items()
+        }
+        context = faults_files.Context(truth.seed, layout, len(header), end, changed)
         for file in faults_files.spoiled(files, mine, context):
             yield file.path, file.content(layout.encoding)
 
@@ -53,6 +57,19 @@ def _reordered(log, values, stamps, channels, layout, rng):
         order = order[::-1]
     moved = [channels[at] for at in order]
     return _header(log, moved, layout), _lines(values[:, order], stamps, moved, layout)
+
+
+def _widened(log, values, stamps, channels, layout, rng):
+    """(header, data lines) of all records with one more column, of which the site knows nothing."""
+    extra = Channel(log=log, column=NEW_COLUMN, kind="log", id=log, quantity="battery_voltage",
+                    unit="V")  # fmt: skip
+    at = int(rng.integers(1, len(channels) + 1))
+    wide = [*channels[:at], extra, *channels[at:]]
+    values = np.insert(values, at, rng.normal(3.6, 0.02, len(values)), axis=1)
+    return _header(log, wide, layout), _lines(values, stamps, wide, layout)
+
+
+PROGRAMS = {"column_order": _reordered, "column_added": _widened}  # what a new program changes
 
 
 def download_path(log, last):
@@ -96,35 +113,11 @@ def _header(log, channels, layout):
 def _lines(values, stamps, channels, layout):
     """Data lines of all records: one a record, or of a long table one a record and channel."""
     places = [decimals(row.quantity, row.unit) for row in channels]
-    for column, count in enumerate(places):
-        # Adding zero takes the minus off a number that is rounded to zero.
-        values[:, column] = np.round(values[:, column], count) + 0.0
     missing = f"{layout.missing_numbers[0]:g}" if layout.missing_numbers else next(
         (text for text in layout.missing_text if text), "NAN"
     )  # fmt: skip
-    forms = [f"%.{count}f" for count in places]
-    separator = layout.separator
-    # Cells are joined by blanks first, which no number holds, so that a decimal comma can be set.
-    form, lines = " ".join(forms), []
     labels = _labels(channels, layout) if layout.long else ()
-    for first in range(0, len(values), ROWS_AT_ONCE):
-        block = values[first : first + ROWS_AT_ONCE]
-        texts = "\n".join([form % tuple(row) for row in block.tolist()])
-        if layout.decimal != ".":
-            texts = texts.replace(".", layout.decimal)
-        if np.isnan(block).any():
-            texts = texts.replace("nan", missing)
-        if not layout.long:
-            texts = texts.replace(" ", separator).split("\n")
-            here = stamps[first : first + ROWS_AT_ONCE]
-            lines += [f"{s}{separator}{text}" for s, text in zip(here, texts, strict=True)]
-            continue
-        for stamp, text in zip(
-            stamps[first : first + ROWS_AT_ONCE], texts.split("\n"), strict=True
-        ):
-            cells = zip(labels, text.split(" "), strict=True)
-            lines += [f"{stamp}{separator}{label}{separator}{cell}" for label, cell in cells]
-    return lines
+    return loggers.record_lines(values, stamps, places, layout, missing, labels)
 
 
 def _labels(channels, layout):

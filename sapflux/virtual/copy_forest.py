@@ -57,7 +57,7 @@ def draw_species(site, seed, weather):
         known = [
             c
             for c in site.table("calibrations")
-            if (c.species, c.method) == (row.species, "heat_dissipation")
+            if (c.species, c.method, c.heating) == (row.species, "heat_dissipation", "continuous")
         ]
         latest = max(known, key=lambda c: c.date, default=None)
         drawn[row.species] = SpeciesTruth(

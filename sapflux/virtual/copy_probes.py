@@ -5,10 +5,10 @@ from dataclasses import replace
 
 import numpy as np
 
-from sapflux.physics import heat_pulse, wood
+from sapflux.physics import heat_pulse
 from sapflux.site import dated, inventory
 from sapflux.site.installations import episodes
-from sapflux.units import MM
+from sapflux.units import CM2_PER_S, MM
 from sapflux.virtual import assumptions, forest, sensors, strip
 from sapflux.virtual.copy_needs import SAP_FLOW
 from sapflux.virtual.seeds import generator
@@ -60,9 +60,21 @@ def true_wood(site, tree, of_species):
     for column, usual in zip(
         ("dry_density_kg_m3", "water_content"), assumptions.WOOD[of_species.anatomy], strict=True
     ):
-        nodes = dated.wood_nodes(site, tree, of_species.name, column)
-        given.append(math.fsum(v for _, v in nodes) / len(nodes) if nodes else usual)
+        measured = _measured(site, tree, of_species, column)
+        given.append(usual if measured is None else measured)
     return tuple(given)
+
+
+def true_diffusivity(site, tree, of_species):
+    """Thermal diffusivity of a tree's wood [m2 s-1] where the site measured it; None else."""
+    measured = _measured(site, tree, of_species, "diffusivity_cm2_s")
+    return None if measured is None else measured * CM2_PER_S
+
+
+def _measured(site, tree, of_species, column):
+    """Mean of a column of `wood.csv` as written; None without a value."""
+    nodes = dated.wood_nodes(site, tree, of_species.name, column)
+    return math.fsum(value for _, value in nodes) / len(nodes) if nodes else None
 
 
 def _of_tree(site, tree, species):
@@ -116,15 +128,15 @@ def _ratio(site, row, seed, species):
         pulse_length=pulse,
         pulse_energy=row.pulse_energy_J_m or usual["pulse_energy"],
         window=window,
+        diffusivity=true_diffusivity(site, row.tree, own),
     )  # fmt: skip
 
 
 def _strip(probe):
-    diffusivity = wood.thermal_diffusivity(probe.dry_density, probe.water_content)
     reading = strip.Reading(
         probe.spacing, probe.spacing_upstream, probe.pulse_length, probe.window
     )  # fmt: skip
-    return strip.apparent_velocities(probe.wound_width, float(diffusivity), reading)
+    return strip.apparent_velocities(probe.wound_width, probe.wood_diffusivity, reading)
 
 
 def _wound(site, row, species, drawn):

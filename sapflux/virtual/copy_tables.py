@@ -8,9 +8,9 @@ import numpy as np
 from sapflux.constants import WATER_DENSITY
 from sapflux.physics.wood import void_fraction
 from sapflux.site.tables import TABLES, columns_of
-from sapflux.units import CM2, CM_PER_M, MM_PER_M, G
+from sapflux.units import CM2, CM2_PER_S, CM_PER_M, MM_PER_M, G
 from sapflux.virtual import assumptions, forest
-from sapflux.virtual.copy_probes import installations, true_wood
+from sapflux.virtual.copy_probes import installations, true_diffusivity, true_wood
 from sapflux.virtual.seeds import generator
 from sapflux.virtual.sensors import RatioProbe
 
@@ -39,6 +39,15 @@ def all_tables(truth, site, plan):
         "pairs": _pairs(site),
     }
     return {name: table_text(name, rows) for name, rows in made.items() if rows}
+
+
+def simplifications(site):
+    """What of the site's tables its copy has in a simpler way, in words."""
+    if any(row.final_width_mm is not None for row in site.table("wounds")):
+        yield "table wounds: widths that grow; those of the copy stay as they are"
+    for name in NOT_COPIED:
+        if site.table(name):
+            yield f"table {name}: of another time than the copy's"
 
 
 def table_text(name, rows):
@@ -77,9 +86,13 @@ def _text(value):
 
 
 def _probe(row, day):
-    """One installation from the day before the first one on, contact as the sapwood gives it."""
+    """One installation from the day before the first one on, contact as the sapwood gives it.
+
+    Heated without a break, as all needles of a copy are.
+    """
     change = {"installed": datetime.fromisoformat(f"{day}T12:00"), "removed": None}
-    return row.model_copy(update={**change, "contact_fraction": None})
+    change |= dict.fromkeys(("contact_fraction", "heating_on_min", "heating_off_min"))
+    return row.model_copy(update=change)
 
 
 def _trees(truth, site, exact):
@@ -142,7 +155,12 @@ def _surveys(truth, date):
 
 
 def _species(truth, site, exact):
-    """Sapwood area a D^b in cm2: a is right in the mean of the stems, then misjudged."""
+    """Sapwood area a D^b in cm2: a is right in the mean of the stems, then misjudged.
+
+    A species that the site calibrates for heating cycles alone is under the general calibration
+    in a copy, which heats without a break and is made with that calibration.
+    """
+    cycled = {c.species for c in site.table("calibrations") if c.heating == "intermittent"}
     rows = []
     for row in site.table("species"):
         stems = [stem for stem in truth.stems if stem.species == row.species]
@@ -154,7 +172,10 @@ def _species(truth, site, exact):
             error = generator(truth.seed, "allometry", row.species).normal(0.0, 1.0)
             if not exact:
                 a = min(a * math.exp(assumptions.ALLOMETRY_ERROR * error), _whole_stems(stems, b))
-        rows.append(row.model_copy(update={"sapwood_area_a_cm2": a, "sapwood_area_b": b}))
+        change = {"sapwood_area_a_cm2": a, "sapwood_area_b": b}
+        if row.species in cycled and not truth.species[row.species].registered:
+            change["general_calibration_accepted"] = True
+        rows.append(row.model_copy(update=change))
     return rows
 
 
@@ -201,19 +222,26 @@ def _wood(truth, site, exact, date):
     samples = {}
     for tree in trees:
         species = truth.known[tree].stem.species
-        pair = true_wood(site, tree, truth.species[species])
-        samples.setdefault(("tree", tree) if exact else ("species", species), []).append(pair)
+        own = truth.species[species]
+        diffusivity = true_diffusivity(site, tree, own)
+        sample = (*true_wood(site, tree, own), np.nan if diffusivity is None else diffusivity)
+        samples.setdefault(("tree", tree) if exact else ("species", species), []).append(sample)
     rows = []
-    for (kind, name), pairs in samples.items():
-        density, water = np.mean(pairs, axis=0)
+    for (kind, name), taken in samples.items():
+        density, water = np.mean(taken, axis=0)[:2]
+        measured = [diffusivity for *_, diffusivity in taken if np.isfinite(diffusivity)]
+        diffusivity = math.fsum(measured) / len(measured) / CM2_PER_S if measured else None
         if not exact:
             rng = generator(truth.seed, "wood sample", name)
             error = 1.0 + assumptions.WOOD_READING * rng.normal(0.0, 1.0, 2)
             density, water = density * error[0], water * error[1]
             # no more water than the wood has room for
             water += min(void_fraction(density, water) * WATER_DENSITY / density, 0.0)
+            if measured:
+                rng = generator(truth.seed, "wood diffusivity", name)
+                diffusivity *= 1.0 + assumptions.DIFFUSIVITY_READING * rng.normal()
         rows.append({kind: name, "date": date, "dry_density_kg_m3": float(density),
-                     "water_content": float(water)})  # fmt: skip
+                     "water_content": float(water), "diffusivity_cm2_s": diffusivity})  # fmt: skip
     return rows
 
 

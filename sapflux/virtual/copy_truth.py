@@ -22,8 +22,8 @@ class VirtualTruth:
     stems : every `forest.Stem`; strata : stand -> species -> `truth.Stratum`; carriers : species
     -> the species that stands in for it where it has no probes; left_out : what of the site the
     copy does not show, in words. options : which assumptions were taken: `wound` ("cubic" or
-    "strip"), `azimuth` and `gradients` (bool), `night_cooling` [K], `weather` ("stochastic" or
-    "given").
+    "strip"), `azimuth` (bool), `gradients` ("natural" or "none"), `night_cooling` [K], `weather`
+    ("stochastic" or "given").
     """
 
     seed: int
@@ -42,6 +42,7 @@ class VirtualTruth:
     stores: dict = field(repr=False)  # name -> the quantity that its logger keeps
     gradients: dict = field(repr=False)  # tree -> natural gradient in full sun [K]
     known: dict = field(repr=False)  # name of a stem -> StemTruth
+    tree_of: dict = field(repr=False)  # name of a probe or pair -> its tree
     faults: tuple = field(default=(), repr=False)  # of `faults_kinds.Injected`
 
     @property
@@ -78,17 +79,20 @@ class VirtualTruth:
         flux = np.array([signals.point_flux(*span, stem, flux_at) for span in spans(parts)])
         return parts[0].facing * flux
 
-    def needle_flux(self, probe):
-        """Flux density that would cool a needle evenly as it is cooled: (point, time) [kg m-2 s-1].
+    def needle_ratio(self, probe):
+        """Difference of a heated needle over that without flow, as it reads: (point, time) [1].
 
-        What a heat-dissipation needle reads if nothing else goes wrong; below `point_flux` where
-        flux falls along it. KeyError for a probe of another method.
+        It averages over sap that flows unevenly, and over wood past which none flows. KeyError for
+        a probe of another method.
         """
-        parts = self._probe(probe)
-        if not isinstance(parts[0], sensors.DissipationProbe):
-            raise KeyError(f"probe {probe!r} is not of heat dissipation")
+        parts = self._heated(probe)
         stem, flux_at = self._stem(parts[0].tree).stem, self.flux_at(parts[0].tree)
-        return np.array([signals.needle_flux(part, stem, flux_at) for part in parts])
+        return np.array([signals.needle_ratio(part, stem, flux_at) for part in parts])
+
+    def even_ratio(self, probe):
+        """As `needle_ratio`, if `point_flux` cooled each needle evenly along its whole length."""
+        pairs = zip(self._heated(probe), self.point_flux(probe), strict=True)
+        return np.array([signals.even_ratio(part, flux) for part, flux in pairs])
 
     def zero_flow(self, probe, point=1):
         """Difference that a heat-dissipation probe's logger would show without flow: (time) [K].
@@ -97,10 +101,7 @@ class VirtualTruth:
         logger keeps kelvin, by its one sensitivity; where it keeps volts, as kelvin of a pair
         whose cold junction is at 20 degC. KeyError for a probe of another method.
         """
-        parts = self._probe(probe)
-        if not isinstance(parts[0], sensors.DissipationProbe):
-            raise KeyError(f"probe {probe!r} is not of heat dissipation")
-        one = parts[point - 1]
+        one = self._heated(probe)[point - 1]
         temperature = sensors.stem_temperature(self.weather)
         zero = sensors.zero_flow_over_time(one, signals.progress(self.weather))
         zero = sensors.in_wood_of(zero, temperature, one.conductivity_slope)
@@ -137,6 +138,12 @@ class VirtualTruth:
         if name not in self.known:
             raise KeyError(f"the copy has no stem {name!r}")
         return self.known[name]
+
+    def _heated(self, name):
+        parts = self._probe(name)
+        if not isinstance(parts[0], sensors.DissipationProbe):
+            raise KeyError(f"probe {name!r} is not of heat dissipation")
+        return parts
 
     def _probe(self, name):
         if name not in self.probes:

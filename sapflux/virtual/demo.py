@@ -29,9 +29,8 @@ def write_demo(configs_folder, truth_folder, seed=plan.SEED):
     files, told = demo_raw.raw_files(truth)
     for name, content in files.items():
         write(site / "raw" / name, content)
-    by_stand = demo_truth.strata(truth)
     columns = ["stand", "species", "date", "sampled_mm", "stand_mm", "sampling_error_mm"]
-    write(beside / "daily.csv", csv_text(columns, demo_truth.daily_rows(by_stand)))
+    write(beside / "daily.csv", csv_text(columns, demo_truth.daily_rows(truth)))
     write(beside / "trees.csv", csv_text(["tree", "date", "kg"], demo_truth.tree_rows(truth)))
     columns = [
         "stem",
@@ -47,7 +46,7 @@ def write_demo(configs_folder, truth_folder, seed=plan.SEED):
     ]
     write(beside / "stems.csv", csv_text(columns, demo_truth.stem_rows(truth)))
     write(beside / "mess.csv", csv_text(["file", "line", "what"], told))
-    write(beside / "truth.toml", demo_truth.toml_text(truth, by_stand))
+    write(beside / "truth.toml", demo_truth.toml_text(truth))
     return written
 
 

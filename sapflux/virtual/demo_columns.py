@@ -2,15 +2,9 @@
 
 from dataclasses import dataclass
 
-import numpy as np
-
-from sapflux.constants import ZERO_CELSIUS
+from sapflux.virtual import copy_values, demo_signals, sensors
 from sapflux.virtual import demo_plan as plan
-from sapflux.virtual import demo_signals, sensors, signals
-from sapflux.virtual.forest import lagged
-from sapflux.virtual.seeds import generator
-
-CM_PER_HOUR = 0.01 / 3600.0
+from sapflux.virtual.demo_forest import grouped_probes
 
 
 @dataclass(frozen=True)
@@ -31,7 +25,7 @@ class Column:
 def columns(truth):
     """Every column of every log, in the order of its files."""
     found = []
-    for group, probe in truth.probes:
+    for group, probe in grouped_probes(truth):
         found += _probe_columns(group, probe)
     found += [
         Column("upper", "heater_V", "log", "upper", 1, "heater_voltage", "V", 2),
@@ -60,13 +54,16 @@ def values(truth, log, every):
     every : records of the weather's clock in one interval of the log.
     """
     out = {}
-    for group, probe in truth.probes:
+    for group, probe in grouped_probes(truth):
         if group.log == log:
             out.update(_probe_values(truth, group, probe, every))
-    if log == "weather":
-        out.update(_weather_values(truth.weather, every))
-    else:
-        out.update(_electrical_values(truth, log, every))
+    for column in columns(truth):
+        if column.log == log and column.kind != "probe":
+            series = copy_values.other_series(truth, column, every)
+            if column.quantity == "heater_voltage":
+                powered = demo_signals.powered_share(log, truth.weather.end, truth.step_s)
+                series = series * powered.reshape(-1, every).mean(axis=1)
+            out[column.name] = copy_values.as_written(series, column.quantity, column.unit)
     return out
 
 
@@ -89,51 +86,17 @@ def _probe_columns(group, probe):
 
 
 def _probe_values(truth, group, probe, every):
+    """name -> values of each column of a probe."""
     if group.method == "heat_dissipation":
-        weather = truth.weather
-        powered = demo_signals.powered_share(group.log, weather.end, weather.step_s)
+        powered = demo_signals.powered_share(group.log, truth.weather.end, truth.step_s)
         emf = demo_signals.dissipation_emf(truth, probe, powered)
-        stored = emf * 1e3 if group.stores == "heated_emf" else sensors.kelvin_by_constant(emf)
-        return {f"dT_{probe.name}": stored}
-    down, up = demo_signals.ratio_signals(truth, probe, every)
-    out = {}
-    for point in (1, 2):
-        log_ratio = np.log(down[point - 1] / up[point - 1])
-        velocity = sensors.stored_velocity(
-            log_ratio, plan.EMBEDDED_DIFFUSIVITY, plan.EMBEDDED_SPACING
+        made = {"heated_emf": emf[None], "heated_difference": sensors.kelvin_by_constant(emf)[None]}
+    else:
+        made = copy_values.of_rises(*demo_signals.ratio_signals(truth, probe, every))
+        made["logged_velocity"] = sensors.stored_velocity(
+            made["log_heat_ratio"], plan.EMBEDDED_DIFFUSIVITY, plan.EMBEDDED_SPACING
         )
-        made = {
-            "rises": {"down": down[point - 1], "up": up[point - 1]},
-            "logged_velocity": {"v": velocity / CM_PER_HOUR},
-            "log_heat_ratio": {"lnr": log_ratio},
-        }[group.stores]
-        out.update({f"{probe.name}_{point}_{short}": made[short] for short in made})
-    return out
-
-
-def _weather_values(weather, every):
-    def mean(series):
-        return series.reshape(-1, every).mean(axis=1)
-
     return {
-        "Tair": mean(weather.air_temperature) - ZERO_CELSIUS,
-        "RH": mean(weather.relative_humidity) * 100.0,
-        "Rs": mean(weather.shortwave_radiation),
-        "rain": weather.precipitation.reshape(-1, every).sum(axis=1),
-        "wind": mean(weather.wind_speed),
+        c.name: copy_values.as_written(made[c.quantity][c.point - 1], c.quantity, c.unit)
+        for c in _probe_columns(group, probe)
     }
-
-
-def _electrical_values(truth, log, every):
-    """Supply, panel and heater: a battery that the sun charges by day."""
-    weather = truth.weather
-    sunny = lagged(weather.shortwave_radiation, 3600.0, weather.step_s) / 700.0
-    battery = signals.battery_voltage(weather, sunny, generator(truth.seed, "battery", log))
-    heater = 2.0 * demo_signals.powered_share(log, weather.end, weather.step_s)
-    panel = weather.air_temperature - ZERO_CELSIUS + 4.0 * sunny
-    series = {
-        "upper": {"heater_V": heater, "batt_V": battery, "panel_C": panel},
-        "lower": {"Ubat": battery},
-        "pulse_a": {"battery": battery},
-    }.get(log, {})
-    return {name: values.reshape(-1, every).mean(axis=1) for name, values in series.items()}

@@ -1,56 +1,65 @@
 """Stems, instrumented trees and probes of the demo site, drawn from its plan."""
 
 import math
-from dataclasses import dataclass
 
 import numpy as np
 
 from sapflux.virtual import demo_plan as plan
 from sapflux.virtual import forest, sensors
+from sapflux.virtual.copy_forest import SpeciesTruth, StemTruth
+from sapflux.virtual.copy_truth import VirtualTruth, draw_strata
 from sapflux.virtual.seeds import generator
 from sapflux.virtual.weather import soil_water, stochastic_weather
 
 
-@dataclass(frozen=True)
-class VirtualForest:
-    """Everything that is true of the demo site, before any logger has seen it.
-
-    `outer` maps a stem's name to its species' flux density below the cambium at vigour 1, with
-    the stem's own response: (time) [kg m-2 s-1]. `flow` maps it to its sap flow (time) [kg s-1].
-    """
-
-    seed: int
-    weather: object
-    stems: tuple
-    probes: tuple  # (ProbeGroup, DissipationProbe or RatioProbe)
-    outer: dict
-    flow: dict
-
-    def stem(self, name):
-        """The stem of that name."""
-        return next(stem for stem in self.stems if stem.name == name)
-
-    def instrumented(self):
-        """Stems that carry a probe, in the order of the survey."""
-        named = {probe.tree for _, probe in self.probes}
-        return [stem for stem in self.stems if stem.name in named]
-
-
 def grow(seed):
-    """The `VirtualForest` of a seed."""
+    """The `VirtualTruth` of a seed."""
     weather = stochastic_weather(
         plan.CLIMATE, plan.POSITION, plan.FIRST_DAY, plan.DAYS, plan.STEP_S, seed
     )
     soil = soil_water(weather)
     stems = tuple(stem for plot in plan.PLOTS for stem in _plot_stems(plot, seed))
-    outer, flow = {}, {}
-    for stem in stems:
-        of_species = plan.SPECIES[stem.species]
-        outer[stem.name] = forest.outer_flux_density(
-            of_species.response, stem.deficit_ratio, weather, soil
-        )
-        flow[stem.name] = forest.stem_flow(stem, of_species.profile, outer[stem.name])
-    return VirtualForest(seed, weather, stems, tuple(_probes(stems, seed)), outer, flow)
+    species = {
+        name: SpeciesTruth(name, own.anatomy, own.response, own.profile, None, own.factor,
+                           own.exponent, registered=True)
+        for name, own in plan.SPECIES.items()
+    }  # fmt: skip
+    drawn = {probe.name: (probe,) for probe in _probes(stems, seed)}
+    carrying = {probe.tree for (probe,) in drawn.values()}
+    known = {
+        stem.name: StemTruth(stem, species[stem.species].nodes, False, stem.name in carrying, 1.0)
+        for stem in stems
+    }
+    living = [one for one in known.values() if one.stem.alive]
+    return VirtualTruth(
+        seed=seed,
+        knowledge="estimated",
+        weather=weather,
+        step_s=weather.step_s,
+        dates=np.datetime64(plan.FIRST_DAY) + np.arange(plan.DAYS),
+        stems=stems,
+        strata=draw_strata(living, species, weather, soil, stand_area),
+        carriers={name: own.stand_in for name, own in plan.SPECIES.items() if own.stand_in},
+        left_out=(),
+        options={"wound": "cubic"},
+        species=species,
+        soil=soil,
+        probes=drawn,
+        gradients={probe.tree: getattr(probe, "gradient", 0.0) for (probe,) in drawn.values()},
+        stores={name: group.stores for group in plan.GROUPS for name in group.probes},
+        known=known,
+        tree_of={name: probe.tree for name, (probe,) in drawn.items()},
+    )
+
+
+def instrumented(truth):
+    """Stems that carry a probe, in the order of the survey."""
+    return [one.stem for one in truth.known.values() if one.instrumented]
+
+
+def grouped_probes(truth):
+    """(`ProbeGroup`, its probe) of every probe, in the order of the plan."""
+    return [(group, truth.probes[name][0]) for group in plan.GROUPS for name in group.probes]
 
 
 def plan_area(plot):
@@ -105,7 +114,7 @@ def _probes(stems, seed):
             stem = next(s for s in stems if s.name == drawn[key][0])
             drawn[key].pop(0)
             make = _dissipation if group.method == "heat_dissipation" else _ratio
-            yield group, make(probe, stem, seed)
+            yield make(probe, stem, seed)
 
 
 def _dissipation(name, stem, seed):

@@ -55,12 +55,12 @@ SUFFIX = {log: settings.files[0].rpartition(".")[2] for log, settings in LOGS.it
 
 @dataclass(frozen=True)
 class Printed:
-    """All records of a log as text, before they are cut into downloads."""
+    """All records of a log, before they are cut into downloads; `values` (record, column)."""
 
     log: str
     end: np.ndarray
     stamps: list
-    cells: dict
+    values: np.ndarray
     meta: list
 
     @property
@@ -81,9 +81,15 @@ class Printed:
         inside = (self.end > demo_signals.standard(first)) & (
             self.end <= demo_signals.standard(last)
         )
-        rows = np.flatnonzero(inside)
-        cells = {name: [self.cells[name][row] for row in rows] for name in order}
-        return loggers.data_lines(self.layout, [self.stamps[row] for row in rows], cells, order)
+        names = [column.name for column in self.meta]
+        columns = [names.index(name) for name in order]
+        return loggers.record_lines(
+            self.values[np.ix_(inside, columns)],
+            [self.stamps[row] for row in np.flatnonzero(inside)],
+            [self.meta[column].decimals for column in columns],
+            self.layout,
+            MISSING.get(self.log, "NAN"),
+        )
 
 
 def raw_files(truth):
@@ -104,17 +110,14 @@ def _printed(truth, log):
     end = truth.weather.end[every - 1 :: every]
     meta = [column for column in demo_columns.columns(truth) if column.log == log]
     made = demo_columns.values(truth, log, every)
-    cells = {}
     for column in meta:
-        values = made[column.name]
         if log in MISSING:
             rng = generator(truth.seed, "missing", f"{log}/{column.name}")
-            values = np.where(rng.random(len(values)) < MISSING_SHARE[log], np.nan, values)
-        cells[column.name] = loggers.number_cells(
-            values, column.decimals, layout, MISSING.get(log, "NAN")
-        )
+            lost = rng.random(len(end)) < MISSING_SHARE[log]
+            made[column.name] = np.where(lost, np.nan, made[column.name])
+    values = np.array([made[column.name] for column in meta]).T
     stamps = loggers.stamp_cells(loggers.clock_times(end, settings), layout)
-    return Printed(log, end, stamps, cells, meta)
+    return Printed(log, end, [layout.separator.join(row) for row in stamps], values, meta)
 
 
 def _name(log, day, more=""):

@@ -3,7 +3,7 @@
 import numpy as np
 
 from sapflux.virtual import demo_plan as plan
-from sapflux.virtual import forest, signals
+from sapflux.virtual import signals
 from sapflux.virtual.seeds import generator
 
 
@@ -13,19 +13,13 @@ def standard(text):
     return np.datetime64(text.replace(" ", "T"), "s") - offset
 
 
-def flux_density(truth, stem, depths):
-    """True flux density of a stem at depths [m]: (depth, time) [kg m-2 s-1]."""
-    nodes = plan.SPECIES[stem.species].profile
-    return forest.flux_density_at(stem, nodes, truth.outer[stem.name], depths)
-
-
 def dissipation_emf(truth, probe, powered):
     """Voltage of a heat-dissipation probe at each record [V]. `powered`: share heated."""
-    stem = truth.stem(probe.tree)
+    stem = truth.known[probe.tree].stem
     emf = signals.dissipation_emf(
         probe,
         stem,
-        lambda depths: flux_density(truth, stem, depths),
+        truth.flux_at(probe.tree),
         truth.weather,
         generator(truth.seed, "noise", probe.name),
         powered,
@@ -50,11 +44,11 @@ def ratio_signals(truth, probe, every):
 
     One record is `every` records of the weather's clock; its pulse sees their mean flow.
     """
-    stem = truth.stem(probe.tree)
+    stem = truth.known[probe.tree].stem
     return signals.ratio_rises(
         probe,
         stem,
-        lambda depths: flux_density(truth, stem, depths),
+        truth.flux_at(probe.tree),
         every,
         lambda point: generator(truth.seed, "noise", f"{probe.name}/{point + 1}"),
     )

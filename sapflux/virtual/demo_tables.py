@@ -6,6 +6,7 @@ import numpy as np
 
 from sapflux.virtual import demo_plan as plan
 from sapflux.virtual.demo_columns import channel_rows
+from sapflux.virtual.demo_forest import grouped_probes, instrumented
 from sapflux.virtual.seeds import generator
 
 INSTALLED = "2031-08-17 12:00"
@@ -73,7 +74,7 @@ def _probes(truth):
         "installed",
     ]
     rows = []
-    for group, probe in truth.probes:
+    for group, probe in grouped_probes(truth):
         rng = generator(truth.seed, "installation", probe.name)
         azimuth = str(int(rng.integers(0, 24)) * 15)
         if group.method == "heat_dissipation":
@@ -89,7 +90,7 @@ def _probes(truth):
 
 def _trees(truth):
     rows = []
-    for stem in truth.instrumented():
+    for stem in instrumented(truth):
         rng = generator(truth.seed, "tree", stem.name)
         height = 1.3 + 32.0 * (1.0 - math.exp(-3.6 * stem.diameter)) * rng.uniform(0.95, 1.05)
         bark = stem.bark * 1000.0 + rng.normal(0.0, 0.3)
@@ -100,7 +101,7 @@ def _trees(truth):
 def _cores(truth):
     """Two opposite faces a tree: their mean is the stem's, each is read with a small error."""
     rows = []
-    for stem in truth.instrumented():
+    for stem in instrumented(truth):
         rng = generator(truth.seed, "core", stem.name)
         skew = rng.normal(0.0, 0.05)
         for face, share in (("E", 1.0 + skew), ("W", 1.0 - skew)):
@@ -181,7 +182,7 @@ def _wood():
 
 def _wounds(truth):
     rows = []
-    for group, probe in truth.probes:
+    for group, probe in grouped_probes(truth):
         if group.method == "heat_ratio":
             error = generator(truth.seed, "wound section", probe.name).normal(0.0, 0.03)
             width = probe.wound_width * 1000.0 + error

@@ -4,25 +4,8 @@ import numpy as np
 
 from sapflux.virtual import demo_plan as plan
 from sapflux.virtual import truth as tables
-from sapflux.virtual.demo_forest import stand_area
+from sapflux.virtual.demo_forest import instrumented
 from sapflux.virtual.weather import quiet_nights
-
-
-def strata(truth):
-    """stand -> species -> `Stratum` of the living stems."""
-    carried = {stem.name for stem in truth.instrumented()}
-    out = {}
-    for stand in sorted({plot.stand for plot in plan.PLOTS}):
-        here = [stem for stem in truth.stems if stem.stand == stand and stem.alive]
-        out[stand] = {}
-        for species in sorted({stem.species for stem in here}):
-            stems = tuple(stem for stem in here if stem.species == species)
-            kg = np.array([
-                tables.daily_sums(truth.flow[stem.name], truth.weather.step_s) for stem in stems
-            ])  # fmt: skip
-            sampled = np.array([stem.name in carried for stem in stems])
-            out[stand][species] = tables.Stratum(stems, kg, sampled, stand_area(stand))
-    return out
 
 
 def days():
@@ -30,14 +13,13 @@ def days():
     return [str(np.datetime64(plan.FIRST_DAY) + day) for day in range(plan.DAYS)]
 
 
-def daily_rows(by_stand):
+def daily_rows(truth):
     """stand, species, date, sampled_mm, stand_mm, sampling_error_mm; species `all` is the stand."""
     rows = []
-    for stand, by_species in by_stand.items():
+    for stand, by_species in truth.strata.items():
         total = np.zeros((2, plan.DAYS))
         for species, stratum in by_species.items():
-            carrier = by_species.get(plan.SPECIES[species].stand_in)
-            pair = np.array([tables.sampled_mm(stratum, carrier), tables.stand_mm(stratum)])
+            pair = np.array([truth.sampled_mm(stand, species), tables.stand_mm(stratum)])
             total += pair
             rows += _mm_rows(stand, species, pair)
         rows += _mm_rows(stand, "all", total)
@@ -47,15 +29,15 @@ def daily_rows(by_stand):
 def tree_rows(truth):
     """tree, date, kg of each instrumented tree."""
     rows = []
-    for stem in truth.instrumented():
-        kg = tables.daily_sums(truth.flow[stem.name], truth.weather.step_s)
+    for stem in instrumented(truth):
+        kg = tables.daily_sums(truth.tree_flow(stem.name), truth.step_s)
         rows += [[stem.name, date, f"{value:.5f}"] for date, value in zip(days(), kg, strict=True)]
     return rows
 
 
 def stem_rows(truth):
     """What is hidden in each stem, instrumented or not."""
-    carried = {stem.name for stem in truth.instrumented()}
+    carried = {stem.name for stem in instrumented(truth)}
     return [
         [
             s.name, s.stand, s.species, int(s.alive), int(s.name in carried),
@@ -66,7 +48,7 @@ def stem_rows(truth):
     ]  # fmt: skip
 
 
-def toml_text(truth, by_stand):
+def toml_text(truth):
     """`truth.toml`: seed, what the tables hold, and what the design can deliver."""
     quiet = quiet_nights(truth.weather, plan.POSITION.utc_offset_h)
     lines = [
@@ -80,13 +62,9 @@ def toml_text(truth, by_stand):
         f"days = {plan.DAYS}",
         f"quiet_nights = {int(quiet.sum())}",
     ]
-    for stand, by_species in by_stand.items():
-        carriers = {s: plan.SPECIES[s].stand_in for s in by_species if plan.SPECIES[s].stand_in}
-        error, difference = tables.stand_design(by_species, carriers)
-        sampled = sum(
-            tables.sampled_mm(part, by_species.get(carriers.get(species))).sum()
-            for species, part in by_species.items()
-        )
+    for stand, by_species in truth.strata.items():
+        error, difference = tables.stand_design(by_species, truth.carriers)
+        sampled = sum(truth.sampled_mm(stand, species).sum() for species in by_species)
         whole = sum(tables.stand_mm(part).sum() for part in by_species.values())
         lines += [
             "",

@@ -5,7 +5,7 @@ import numpy as np
 from sapflux.virtual.copy_files import download_path, spans
 from sapflux.virtual.faults import KINDS, LEVELS, Injected
 from sapflux.virtual.faults_clock import CLOCK
-from sapflux.virtual.faults_files import SPOIL
+from sapflux.virtual.faults_files import FROM_THE_END, SPOIL
 from sapflux.virtual.faults_kinds import BEGINS, Calendar
 from sapflux.virtual.seeds import generator
 
@@ -99,7 +99,7 @@ def _fault(kind, place, begin, calendar, site, plan, rng):
     if kind.name in SPOIL and kind.until != "end":
         first, last = next(span for span in calendar.spans if span[0] == begin)
         name, end = download_path(plan.logs[place.log], site.standard(last)), last
-        if kind.name == "truncated_file":
+        if kind.name in FROM_THE_END:
             size = min(size, 0.9 * (last - first) / np.timedelta64(86400, "s"))
             begin = last - np.timedelta64(round(size * 86400), "s")
     else:

@@ -2,19 +2,24 @@
 
 import numpy as np
 
-from sapflux import schema
+from sapflux import schema, units
 from sapflux.physics import thermocouple
 from sapflux.virtual import sensors
 from sapflux.virtual.copy_values import FULL_SUN, as_written
 from sapflux.virtual.faults_kinds import (
+    AFTER,
+    BEFORE,
     HEATED,
+    PULSE,
     RATIOS,
+    RISES,
     SIGNAL,
     THERMAL,
     Kind,
     columns_of,
     followers,
     logs_of,
+    probes_of,
 )
 from sapflux.virtual.faults_records import per_kelvin
 from sapflux.virtual.forest import lagged
@@ -22,14 +27,30 @@ from sapflux.virtual.forest import lagged
 DRYING_H = 3.0  # e-folding time of a wet connector
 WET_NOISE = 5.0  # times the noise of the column
 CHARGING_LAG_S = 3600.0  # of a battery behind the sun
+SURGE = 5.0  # daily ranges, of the strike that leaves an offset
+WHOLE = ("heat_ratio", *RATIOS)  # what one column says of both needles
 FLOOR = 0.02  # share of the daily range, noise of an input that shows nothing
 
 
 def polarity_reversal(records, fault, rng):
-    """Two wires exchanged: the sign turns for `size` days."""
-    rows = records.rows(fault)
-    for column, _ in records.struck(fault):
-        records.values[rows, column] *= -1.0
+    """Two wires, or the needles up and down of the heater, exchanged for `size` days."""
+    rows, struck = records.rows(fault), records.struck(fault)
+    for column, row in struck:
+        if row.quantity in (*HEATED, *RATIOS):
+            records.values[rows, column] *= -1.0
+        elif row.quantity == "heat_ratio":
+            records.values[rows, column] = 1.0 / records.values[rows, column]
+    for names in (RISES, BEFORE, AFTER):
+        pair = [(column, row) for column, row in struck if row.quantity in names]
+        if len(pair) == 2:
+            (first, one), (second, other) = pair
+            shown = [
+                units.to_si(records.values[rows, column], row.unit,
+                            difference=schema.QUANTITIES[row.quantity].difference)
+                for column, row in pair
+            ]  # fmt: skip
+            records.values[rows, first] = as_written(shown[1], one.quantity, one.unit)
+            records.values[rows, second] = as_written(shown[0], other.quantity, other.unit)
 
 
 def open_input(records, fault, rng):
@@ -41,11 +62,17 @@ def open_input(records, fault, rng):
 
 
 def shorted_input(records, fault, rng):
-    """Bare wires that touch, for `size` hours: nearly nothing, with a little noise."""
-    rows = records.rows(fault)
-    for column, _ in records.struck(fault):
-        noise = FLOOR * records.daily_range(column)
-        records.values[rows, column] = rng.normal(0.0, noise, len(rows))
+    """Bare wires that touch, for `size` hours: nearly nothing, with a little noise.
+
+    A temperature is then that of the logger's panel, to which the pair is compared.
+    """
+    rows, weather = records.rows(fault), records.truth.weather
+    for column, row in records.struck(fault):
+        noise = rng.normal(0.0, FLOOR * records.daily_range(column), len(rows))
+        records.values[rows, column] = noise
+        if row.quantity in (*BEFORE, *AFTER):
+            panel = records.mean(weather.air_temperature)[rows]
+            records.values[rows, column] += as_written(panel, row.quantity, row.unit)
 
 
 def floating_input(records, fault, rng):
@@ -63,10 +90,8 @@ def wet_connector(records, fault, rng):
     decay = np.exp(-records.days(fault) * 24.0 / DRYING_H)
     for column, row in records.struck(fault):
         kelvin = fault.size * 1e-6 / thermocouple.sensitivity(sensors.ROOM)
-        differences = np.diff(records.clean[:, column])
-        # Source: robust spread of first differences, 1.4826 MAD / sqrt(2).
-        noise = 1.4826 * np.nanmedian(np.abs(differences - np.nanmedian(differences))) / 2**0.5
-        wet = kelvin * per_kelvin(row) + WET_NOISE * noise * rng.standard_normal(len(rows))
+        noise = WET_NOISE * records.noise(column) * rng.standard_normal(len(rows))
+        wet = kelvin * per_kelvin(row) + noise
         records.values[rows, column] += wet * decay
 
 
@@ -96,6 +121,14 @@ def lightning(records, fault, rng):
         records.values[rows, column] += push * records.daily_range(column)
 
 
+def lightning_offset(records, fault, rng):
+    """A surge that leaves one input `size` daily ranges off until it is mended."""
+    rows = records.rows(fault)
+    for column, _ in records.struck(fault):
+        records.values[rows, column] += fault.size * records.daily_range(column)
+        records.values[rows[0], column] += SURGE * np.sign(fault.size) * records.daily_range(column)
+
+
 def spike(records, fault, rng):
     """One or two records off by `size` daily ranges."""
     rows = records.rows(fault)
@@ -121,8 +154,22 @@ def multiplexer_ghost(records, fault, rng):
         records.values[rows, column] = own + fault.size * (other - own)
 
 
+def _reversible(plan, truth):
+    """Places: heated columns by themselves, and all that a log keeps of a point with pulses."""
+    return columns_of(*HEATED)(plan, truth) + [
+        place
+        for place in probes_of(*PULSE, *BEFORE)(plan, truth)
+        # One needle alone of the two has nothing to change places with.
+        if len(place.columns) > 1 or place.columns[0] in _odd(plan, place.log)
+    ]
+
+
+def _odd(plan, log):
+    return {r.column for r in plan.channels if r.log == log and r.quantity in WHOLE}
+
+
 KINDS = (
-    Kind("polarity_reversal", columns_of(*HEATED, *RATIOS), 0.003, (0.5, 40.0), "d", None,
+    Kind("polarity_reversal", _reversible, 0.003, (0.5, 40.0), "d", None,
          polarity_reversal),
     Kind("open_input", columns_of(*SIGNAL), 0.008, (0.5, 240.0), "h", None, open_input),
     Kind("shorted_input", columns_of(*SIGNAL), 0.004, (0.5, 240.0), "h", None, shorted_input),
@@ -136,6 +183,8 @@ KINDS = (
          panel_error, signed=True),
     Kind("lightning", logs_of(*SIGNAL, fewest=3), 0.3, (0.2, 20.0), "daily range", (0.0, 0.01),
          lightning, begins="rain"),
+    Kind("lightning_offset", columns_of(*SIGNAL), 0.005, (0.02, 3.0), "daily range", (3.0, 60.0),
+         lightning_offset, begins="rain", signed=True),
     Kind("spike", columns_of(*SIGNAL), 0.1, (0.1, 20.0), "daily range", (0.0, 0.01), spike,
          signed=True),
     Kind("cable_damage", columns_of(*SIGNAL), 0.01, (0.03, 3.0), "daily range", (0.2, 10.0),

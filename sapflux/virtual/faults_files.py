@@ -1,6 +1,5 @@
 """Faults of downloads: files saved twice, torn, empty, in conflict, with another column order."""
 
-from collections.abc import Callable
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -34,7 +33,7 @@ class Context:
     layout: object
     header_lines: int
     end: np.ndarray  # of all records, UTC
-    reordered: Callable  # generator -> (header, lines) of all records, columns in another order
+    changed: dict  # kind -> function: generator -> (header, lines) of all records by a new program
 
 
 def spoiled(files, faults, context):
@@ -55,9 +54,9 @@ def _each(change):
     return spoil
 
 
-def _column_order(files, fault, context, rng):
-    """Columns in another order from a moment on, with a new header there."""
-    header, lines = context.reordered(rng)
+def _new_program(files, fault, context, rng):
+    """Columns in another order, or one more, from a moment on, with a new header there."""
+    header, lines = context.changed[fault.kind](rng)
     ends = context.end
     made = []
     for file in files:
@@ -116,12 +115,56 @@ def _data_line(file, rng):
 def _header_again(file, fault, context, rng):
     at = _data_line(file, rng)
     blank = np.full(context.header_lines, np.datetime64("NaT"), file.ends.dtype)
-    # A file that had its columns moved repeats the header that holds at that line.
-    tops = [n for n, line in enumerate(file.lines[: at - 1]) if line == file.lines[0]]
-    first = tops[-1] if tops else 0
+    # A file whose columns changed on the way repeats the header that holds at that line.
+    heads = np.flatnonzero(np.isnat(file.ends[: at - 1]))
+    first = max(heads[-1] + 1 - context.header_lines, 0) if len(heads) else 0
     header = file.lines[first : first + context.header_lines]
     ends = np.concatenate([file.ends[: at - 1], blank, file.ends[at - 1 :]])
     return replace(file, lines=mess.with_block(file.lines, at, header), ends=ends)
+
+
+def _decimal_comma(file, fault, context, rng):
+    """The other decimal mark in all numbers from the begin of the fault on."""
+    layout, lines = context.layout, list(file.lines)
+    old, new = (".", ",") if layout.decimal == "." else (",", ".")
+    for n in np.flatnonzero((file.ends > fault.begin) & (file.ends <= fault.end)):
+        stamp, numbers = _parted(lines[n], layout)
+        lines[n] = stamp + numbers.replace(old, new)
+    return replace(file, lines=lines)
+
+
+def _parted(line, layout):
+    """(what comes before the numbers of a line, the numbers), of a long table the last cell."""
+    if layout.long:
+        before, mark, last = line.rpartition(layout.separator)
+        return before + mark, last
+    at = 0
+    for _ in layout.time_columns:
+        if layout.quote and line.startswith(layout.quote, at):
+            at = line.index(layout.quote, at + 1)
+        at = line.index(layout.separator, at) + 1
+    return line[:at], line[at:]
+
+
+def _garbled(file, fault, context, rng):
+    """`size` characters of a line of data turned into others."""
+    n = _data_line(file, rng) - 1
+    line, count = file.lines[n], min(round(fault.size), len(file.lines[n]) - 1)
+    at = int(rng.integers(1, len(line) - count + 1))
+    noise = "".join(rng.choice(list(GARBAGE), count))
+    return replace(file, lines=[*file.lines[:n], line[:at] + noise + line[at + count :],
+                                *file.lines[n + 1 :]])  # fmt: skip
+
+
+def _repeated(file, fault, context, rng):
+    """`size` lines of data written a second time right after themselves."""
+    first = _data_line(file, rng) - 1
+    rows = slice(first, min(first + round(fault.size), len(file.lines)))
+    rows = [n for n in range(rows.start, rows.stop) if not np.isnat(file.ends[n])]
+    last = rows[-1] + 1
+    lines = [*file.lines[:last], *(file.lines[n] for n in rows), *file.lines[last:]]
+    ends = np.concatenate([file.ends[:last], file.ends[rows], file.ends[last:]])
+    return replace(file, lines=lines, ends=ends)
 
 
 def _truncated(file, fault, context, rng):
@@ -175,25 +218,35 @@ def _named(path, more):
 
 
 SPOIL = {
-    "column_order": _column_order,
+    "column_order": _new_program,
+    "column_added": _new_program,
     "overlap_conflict": _overlap_conflict,
     "truncated_file": _each(_truncated),
+    "decimal_comma": _each(_decimal_comma),
+    "repeated_lines": _each(_repeated),
     "header_again": _each(_header_again),
     "open_quote": _each(_open_quote),
     "nul_bytes": _each(_nul_bytes),
+    "garbled_line": _each(_garbled),
     "trailing_delimiters": _each(_trailing),
     "torn_line": _each(_torn),
     "duplicate_file": _duplicate,
     "empty_file": _empty,
 }
+FROM_THE_END = ("truncated_file", "decimal_comma")  # from `size` before the last line on to it
+GARBAGE = "?@~^$" + chr(7) + chr(27)  # in every encoding
 ONE = (1.0, 1.0)
 KINDS = (
     Kind("column_order", wide_logs, 0.02, ONE, "order", ONE, begins="any", until="end"),
+    Kind("column_added", wide_logs, 0.02, ONE, "column", ONE, begins="any", until="end"),
     Kind("overlap_conflict", whole_logs, 0.03, (1e-3, 0.3), "1", ONE, begins="later file"),
     Kind("truncated_file", whole_logs, 0.05, (0.05, 15.0), "d", ONE, begins="file"),
+    Kind("decimal_comma", whole_logs, 0.01, (0.02, 15.0), "d", ONE, begins="file"),
+    Kind("repeated_lines", whole_logs, 0.03, (1.0, 1500.0), "line", ONE, begins="file"),
     Kind("header_again", whole_logs, 0.05, ONE, "header", ONE, begins="file"),
     Kind("open_quote", quoted_logs, 0.02, ONE, "line", ONE, begins="file"),
     Kind("nul_bytes", whole_logs, 0.03, (4.0, 400.0), "byte", ONE, begins="file"),
+    Kind("garbled_line", whole_logs, 0.05, (1.0, 40.0), "character", ONE, begins="file"),
     Kind("trailing_delimiters", whole_logs, 0.02, ONE, "delimiter", ONE, begins="file"),
     Kind("torn_line", whole_logs, 0.1, (0.05, 0.95), "1", ONE, begins="file"),
     Kind("duplicate_file", whole_logs, 0.1, ONE, "file", ONE, begins="file"),

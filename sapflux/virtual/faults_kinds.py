@@ -9,9 +9,12 @@ import numpy as np
 HEATED = ("heated_emf", "heated_difference")
 UNHEATED = ("unheated_emf", "unheated_difference")
 RISES = ("rise_downstream", "rise_upstream")
-RATIOS = ("log_heat_ratio", "logged_velocity")
-THERMAL = (*HEATED, *UNHEATED, *RISES)
-SIGNAL = (*THERMAL, *RATIOS)
+BEFORE = ("temperature_before_downstream", "temperature_before_upstream")
+AFTER = ("temperature_after_downstream", "temperature_after_upstream")
+RATIOS = ("log_heat_ratio", "logged_velocity")  # odd in the flow
+PULSE = (*RISES, *AFTER, "heat_ratio", *RATIOS)  # what a log may keep of the rises of a pulse
+THERMAL = (*HEATED, *UNHEATED, *RISES, *BEFORE, *AFTER)
+SIGNAL = (*THERMAL, "heat_ratio", *RATIOS)
 FROST = 272.65  # K of the air, below which wood can freeze
 DAY = np.timedelta64(86400, "s")
 
@@ -143,11 +146,6 @@ def probes_of(*quantities):
         ]
 
     return places
-
-
-def pulses(plan, truth):
-    """Places: points of heat-ratio probes of which a log keeps both rises."""
-    return [place for place in probes_of(*RISES)(plan, truth) if len(place.columns) == 2]
 
 
 def logs_of(*quantities, more=(), fewest=1):

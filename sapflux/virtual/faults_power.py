@@ -8,7 +8,8 @@ from sapflux.virtual.faults_kinds import HEATED, Kind, columns_of, logs_of, prob
 from sapflux.virtual.faults_records import per_kelvin
 
 RECOVERY_H = 3.0  # after which a needle is warm again
-SUPPLY = ("heater_voltage", "heater_state")
+ELECTRIC = ("heater_voltage", "heater_current")  # each goes with the root of the power
+SUPPLY = (*ELECTRIC, "heater_state")
 SAG_FROM, SAG_DEEPEST, SAG_TO = 1.0, 6.0, 11.0  # h of standard time
 
 
@@ -34,7 +35,7 @@ def supply_sag(records, fault, rng):
     depth = np.interp(hours, [SAG_FROM, SAG_DEEPEST, SAG_TO], [0.0, 1.0, 0.0])
     power = 1.0 - fault.size * depth
     for column, row in records.struck(fault):
-        if row.quantity == "heater_voltage":
+        if row.quantity in ELECTRIC:
             records.values[rows, column] *= np.sqrt(power)
         elif row.quantity in HEATED:
             _heat(records, rows, column, row, power, rng)
@@ -68,7 +69,7 @@ KINDS = (
          heater_power, begins="first", until="end", signed=True),
     Kind("heater_power_loss", logs_of(*HEATED, more=SUPPLY), 0.2, (0.5, 72.0), "h", None,
          power_loss, after_h=RECOVERY_H),
-    Kind("supply_sag", logs_of(*HEATED, more=("heater_voltage",)), 0.15, (0.003, 0.3), "1",
+    Kind("supply_sag", logs_of(*HEATED, more=ELECTRIC), 0.15, (0.003, 0.3), "1",
          (2.0, 15.0), supply_sag, begins="evening"),
     Kind("low_battery", columns_of("battery_voltage"), 0.1, (0.3, 3.0), "V", (0.5, 10.0),
          low_battery),

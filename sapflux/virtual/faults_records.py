@@ -6,7 +6,7 @@ import numpy as np
 
 from sapflux.physics import thermocouple
 from sapflux.virtual import sensors
-from sapflux.virtual.copy_values import as_written, decimals
+from sapflux.virtual.copy_values import as_written, decimals, probe_series
 
 EMF = ("heated_emf", "unheated_emf")
 
@@ -66,6 +66,11 @@ class Records:
             self._kept[key] = max(high - low, 10.0 ** -decimals(row.quantity, row.unit))
         return self._kept[key]
 
+    def noise(self, column):
+        """Standard deviation of a column's noise: 1.4826 MAD / sqrt(2) of first differences."""
+        differences = np.diff(self.clean[:, column])
+        return 1.4826 * np.nanmedian(np.abs(differences - np.nanmedian(differences))) / 2**0.5
+
     def zero_flow(self, row):
         """What a heated column would show without flow, in its unit: (record)."""
         key = ("zero", row.id, row.point, row.quantity)
@@ -81,6 +86,14 @@ class Records:
                 )
             self._kept[key] = as_written(self.mean(kelvin), row.quantity, row.unit)
         return self._kept[key]
+
+    def rises(self, row):
+        """Rises of the pulses behind a column without faults, downstream first: (2, record) [K]."""
+        key = ("rises", row.id)
+        if key not in self._kept:
+            series = probe_series(self.truth, self.site, row, self.every)
+            self._kept[key] = np.array([series["rise_downstream"], series["rise_upstream"]])
+        return self._kept[key][:, row.point - 1]
 
     def natural(self, row):
         """What a heated column shows of the stem's own gradient, in its unit: (record)."""

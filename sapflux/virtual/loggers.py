@@ -5,6 +5,9 @@ from zoneinfo import ZoneInfo
 
 import numpy as np
 
+ROWS_AT_ONCE = 4000  # bounds the memory of numbers on their way to text
+WORDS = {"-inf": "ERROR", "inf": "INF"}  # what a logger may write where it has no number
+
 
 def clock_times(end, log, zoned=False):
     """What the logger's clock showed at each record, as `datetime`s.
@@ -36,22 +39,6 @@ def stamp_cells(times, layout):
     cells = [tuple(time.strftime(form) for form in forms) for time in times]
     mark = layout.quote if layout.quote and columns == 1 and layout.delimiter == "," else ""
     return [tuple(f"{mark}{cell}{mark}" for cell in row) for row in cells]
-
-
-def number_cells(values, decimals, layout, missing):
-    """Numbers as the logger prints them; `missing` where NaN.
-
-    >>> from sapflux.site.config import Layout
-    >>> number_cells([1.25, float("nan")], 1, Layout(delimiter=";", decimal=","), "-6999")
-    ['1,2', '-6999']
-    """
-    cells = []
-    for value in values:
-        text = missing if np.isnan(value) else f"{value:.{decimals}f}"
-        if not text.strip("-0."):
-            text = text.lstrip("-")  # no minus before a rounded zero
-        cells.append(text if text == missing else text.replace(".", layout.decimal))
-    return cells
 
 
 def header_lines(layout, names, units, aggregations, note):
@@ -89,14 +76,40 @@ def in_quotes(cell, layout):
     return f"{layout.quote}{cell}{layout.quote}" if marked else cell
 
 
-def data_lines(layout, stamps, columns, order):
-    """Records as text, one a line.
+def record_lines(values, stamps, decimals, layout, missing, labels=()):
+    """Data lines: one a record, or of a long table one a record and column.
 
-    stamps : as `stamp_cells` gives them; columns : name -> (record) text; order : names in file
-    order.
+    values : (record, column), NaN where there is `missing`, infinite where there is one of `WORDS`;
+    stamps : (record) time cells, joined; decimals : (column); labels : (column) name cells of a
+    long table, joined.
+
+    >>> from sapflux.site.config import Layout
+    >>> layout = Layout(delimiter=";", decimal=",", quote="")
+    >>> record_lines(np.array([[1.25, np.nan], [-0.01, 7.0]]), ["a", "b"], [1, 0], layout, "-6999")
+    ['a;1,2;-6999', 'b;0,0;7']
     """
-    rows = zip(stamps, *(columns[name] for name in order), strict=True)
-    return [layout.separator.join([*row[0], *row[1:]]) for row in rows]
+    steps = 0.5 * 10.0 ** -np.array(decimals, float)
+    values = np.where(np.abs(values) <= steps, 0.0, values)  # no minus before a rounded zero
+    # Cells are joined by blanks first, which no number holds, so that a decimal comma can be set.
+    form, separator, lines = " ".join(f"%.{count}f" for count in decimals), layout.separator, []
+    for first in range(0, len(values), ROWS_AT_ONCE):
+        block, here = values[first : first + ROWS_AT_ONCE], stamps[first : first + ROWS_AT_ONCE]
+        texts = "\n".join([form % tuple(row) for row in block.tolist()])
+        if layout.decimal != ".":
+            texts = texts.replace(".", layout.decimal)
+        if np.isnan(block).any():
+            texts = texts.replace("nan", missing)
+        if np.isinf(block).any():
+            for number, word in WORDS.items():
+                texts = texts.replace(number, word)
+        if not layout.long:
+            texts = texts.replace(" ", separator).split("\n")
+            lines += [f"{s}{separator}{text}" for s, text in zip(here, texts, strict=True)]
+            continue
+        for stamp, text in zip(here, texts.split("\n"), strict=True):
+            cells = zip(labels, text.split(" "), strict=True)
+            lines += [f"{stamp}{separator}{label}{separator}{cell}" for label, cell in cells]
+    return lines
 
 
 def as_bytes(lines, line_end="\n", last_end=None):

@@ -11,6 +11,7 @@ from sapflux.virtual.forest import lagged
 from sapflux.virtual.inverse import inverse_of, power_table
 
 NODES, WEIGHTS = np.polynomial.legendre.leggauss(8)
+END_OF_CUBIC = 1e-4  # share of its range over which the slope at its end is taken
 ROOM = 293.15  # K, at which zero-flow differences and sensitivities are stated
 
 
@@ -46,7 +47,8 @@ class RatioProbe:
     `offset` [m s-1] is what the probe shows without flow, the same at every velocity: needles not
     quite parallel. `noise` [K] is that of a temperature rise averaged over the window. `shown` is
     the wound as a strip, a function true -> apparent velocity [m s-1] such as
-    `strip.ApparentVelocity`; None for the numerical inverse of the published cubic.
+    `strip.ApparentVelocity`; None for the numerical inverse of the published cubic. `diffusivity`
+    [m2 s-1] is that of the wood where it was measured; None for that of density and water content.
     """
 
     name: str
@@ -65,6 +67,14 @@ class RatioProbe:
     spacing_upstream: float | None = None  # where it differs from `spacing`
     facing: float = 1.0  # flux density at its face over the mean around the stem
     shown: Callable | None = None
+    diffusivity: float | None = None
+
+    @property
+    def wood_diffusivity(self):
+        """Thermal diffusivity of the wood [m2 s-1]."""
+        if self.diffusivity is not None:
+            return self.diffusivity
+        return float(wood.thermal_diffusivity(self.dry_density, self.water_content))
 
 
 def needle_depths(begin, end, sapwood_depth):
@@ -142,12 +152,13 @@ def kelvin_by_constant(emf, at=ROOM):
 def apparent_velocity(probe, flux_density):
     """Velocity [m s-1] that the probe shows at a true flux density [kg m-2 s-1].
 
-    The heat that sap carries, V = J c_w / (rho c) (heat balance, own derivation). The wound makes
-    it seem slower: as the probe's strip shows it, else by a numerical inverse of the published
-    cubic, whose range it must not leave (NaN in wounds outside it, the limit of 40 cm h-1 above).
+    The wound makes the true one seem slower: as the probe's strip shows it, else by a numerical
+    inverse of the published cubic, NaN in wounds outside its table. The table ends at 40 cm h-1 as
+    shown; from there the probe goes on in a straight line with the slope at its end (own
+    judgement: the strip, too, bends little there). What a pipeline can still read of it is left to
+    the rises, of which the upstream one drowns in noise.
     """
-    stored = wood.volumetric_heat_capacity(probe.dry_density, probe.water_content)
-    true = flux_density * WATER_SPECIFIC_HEAT / stored
+    true = true_velocity(probe, flux_density)
     if probe.shown is not None:
         return probe.shown(true)
     highest = heat_pulse.HIGHEST_WOUND_VELOCITY
@@ -155,19 +166,33 @@ def apparent_velocity(probe, flux_density):
     def shown(speed):
         return heat_pulse.wound_velocity(speed, probe.wound_width)
 
-    return np.sign(true) * inverse_of(shown, np.abs(true), 0.0, highest)
+    speed = np.abs(true)
+    last, before = shown(highest), shown(highest * (1.0 - END_OF_CUBIC))
+    slope = highest * END_OF_CUBIC / (last - before)
+    beyond = highest + slope * (speed - last)
+    return np.sign(true) * np.where(speed > last, beyond, inverse_of(shown, speed, 0.0, highest))
+
+
+def true_velocity(probe, flux_density):
+    """Heat pulse velocity without a wound [m s-1]: V = J c_w / (rho c).
+
+    Source: the heat that sap carries (heat balance, own derivation).
+    """
+    stored = wood.volumetric_heat_capacity(probe.dry_density, probe.water_content)
+    return flux_density * WATER_SPECIFIC_HEAT / stored
 
 
 def rises(probe, velocity):
     """Mean rises downstream and upstream [K] in the reading window, without noise.
 
     A line source in sap that moves at the apparent `velocity` [m s-1]: a finite pulse is the sum
-    of eight short ones, the window the mean of steps of 2 s. Shapes of `velocity`. With a strip for
-    a wound their ratio is right; each is below this by 0.5 % at a true 23 and 6 % at 52 cm h-1.
+    of eight short ones, the window the mean of steps of 2 s. Shapes of `velocity`. Of single
+    rises the published cubic says nothing: they are those of wood that is as slow all over. With a
+    strip for a wound both are smaller by `strip.ApparentVelocity.share`.
 
     Source: Marshall (1958), Plant Physiology 33.
     """
-    diffusivity = wood.thermal_diffusivity(probe.dry_density, probe.water_content)
+    diffusivity = probe.wood_diffusivity
     capacity = wood.volumetric_heat_capacity(probe.dry_density, probe.water_content)
     velocity = np.asarray(velocity, float)
     upstream = -(probe.spacing if probe.spacing_upstream is None else probe.spacing_upstream)

@@ -39,9 +39,13 @@ def ratio_rises(probe, stem, flux_at, every, rng_of, rises=sensors.rises):
         flow = point_flux(probe.depths_from[point], probe.depths_to[point], stem, flux_at)
         flow = probe.facing * flow.reshape(-1, every).mean(axis=1)
         velocity = sensors.apparent_velocity(probe, flow) + probe.offset[point]
+        share = 1.0
+        if probe.shown is not None:
+            share = probe.shown.share(sensors.true_velocity(probe, flow))
         rng = rng_of(point)
         pairs.append([
-            rise + rng.normal(0.0, probe.noise, len(rise)) for rise in rises(probe, velocity)
+            rise * share + rng.normal(0.0, probe.noise, len(rise))
+            for rise in rises(probe, velocity)
         ])  # fmt: skip
     down, up = zip(*pairs, strict=True)
     return np.array(down), np.array(up)
@@ -57,18 +61,19 @@ def point_flux(begin, end, stem, flux_at):
     return (weights[:, None] * flux_at(depths)).sum(axis=0)
 
 
-def needle_flux(probe, stem, flux_at):
-    """Flux density of evenly cooled wood that would cool the needle as much: (time) [kg m-2 s-1].
-
-    Of the part in sapwood, by the probe's own calibration.
-    """
-    depths, weights, _ = sensors.needle_depths(
+def needle_ratio(probe, stem, flux_at):
+    """Difference that a heated needle reads over what it reads without flow: (time) [1]."""
+    depths, weights, share = sensors.needle_depths(
         probe.needle_from, probe.needle_to, stem.sapwood_depth
     )
-    one = np.ones(1)
     flux = probe.facing * flux_at(depths)
-    cooled = sensors.heated_difference(probe, flux, weights, 1.0, one)
-    return dissipation.flux_density(1.0 / cooled - 1.0, probe.factor, probe.exponent)
+    return sensors.heated_difference(probe, flux, weights, share, np.ones(1))
+
+
+def even_ratio(probe, flux_density):
+    """As `needle_ratio`, of a needle wholly in sapwood that a flux density cools evenly."""
+    index = dissipation.index_of(flux_density, probe.factor, probe.exponent)
+    return 1.0 / (1.0 + index)
 
 
 def progress(weather):

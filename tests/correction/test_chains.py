@@ -41,6 +41,9 @@ FACTS = {
         "given_diffusivity": [NAN] * 4,
         "spacing_downstream": [6e-3] * 4,
         "spacing_upstream": [6e-3] * 4,
+        "window_from": [60.0] * 4,
+        "window_to": [100.0] * 4,
+        "pulse_length": [8.0] * 4,
         "wound_width": [2e-3, 2e-3, NAN, 2e-3],
     },
 }
@@ -61,6 +64,10 @@ def chain_of(method, made):
     quiet = (np.arange(len(TIME)) // 48) % 3 == 0
     around = beside(signal, deficit_Pa=np.where(quiet, 20.0, 150.0), installation=installation)
     around |= {fact_name: fact(row, signal) for fact_name, row in FACTS[method].items()}
+    old = np.array([[400.0], [0.0], [0.0], [0.0]]) + np.arange(len(TIME)) / 48  # days
+    around["installed_age"] = around["installation"].copy(data=86400.0 * old)
+    trees = np.array(["T1", "T1", "T2", "T3"])
+    around["probe_tree"] = xr.DataArray(trees, {"probe": signal["probe"].values}, ("probe",))
 
     def beside_block(ends, wanted):
         at = np.searchsorted(TIME.astype("datetime64[s]"), ends)
@@ -121,7 +128,7 @@ def test_heat_ratio_chain_takes_the_offset_off_before_the_wound():
     # Wood of 500 kg m-3 and water content 1.0: 0.00247 cm2 s-1 (Burgess et al. 2001, from memory),
     # so a log ratio of 0.05 at rest is 0.05 * 0.00247 / 0.6 * 3600 = 0.741 cm h-1.
     # Noise of 0.001 in the log is 0.015 cm h-1 a record, 0.0033 in the median of 8 means of 4.
-    offsets = tables["zero_offset_nights"].query("probe == 'P1'")["offset_cm_h"]
+    offsets = tables["zero_ratio_nights"].query("probe == 'P1'")["offset_cm_h"]
     assert offsets.to_numpy() == pytest.approx(0.741, abs=0.01)
     rest = (HOUR > 0) & (HOUR < 6)
     noon_log = 0.9 * np.sin(np.pi * 5 / 10)  # 12:00

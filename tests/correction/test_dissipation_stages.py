@@ -43,7 +43,7 @@ def test_constant_sensitivity_reads_high_at_20_degrees_published():
 def test_measured_stem_temperature_is_used_record_by_record():
     emf = record([0.4e-3, 0.4e-3, 0.4e-3, np.nan])
     stem = probe_series([293.15, 278.15, np.nan, np.nan], emf)
-    made = call("heated_difference", emf, None, stem, method="its90_measured")
+    made = call("heated_difference", emf, None, stem, method="its90_alone")
     found = made["heated_difference"].values[0, 0]
     assert found[0] == pytest.approx(9.833701, abs=5e-7)
     # Seebeck 38.748106 uV/K at 0 and 39.859152 at 15 degC: a colder stem needs a larger difference.

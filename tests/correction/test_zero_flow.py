@@ -5,7 +5,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 import sapflux.correction  # noqa: F401
-from sapflux.correction.zero_flow import baseline_line
+from sapflux.correction.baseline_line import baseline_line
 from sapflux.physics import dissipation
 from sapflux.stage import REGISTRY
 

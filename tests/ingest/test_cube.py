@@ -106,6 +106,15 @@ def test_stem_temperature_of_a_tree_is_laid_on_its_probe_alone():
     assert made["stem_temperature"].sel(probe="B").isnull().all()
 
 
+def test_stem_diameter_of_a_tree_is_laid_on_its_probe_alone():
+    channels = CHANNELS + "\nL,band,tree,t2,stem_diameter_change,um,,"
+    made = cube(VALUES | {"band": [0, 5, 10, 20]}, channels)
+    np.testing.assert_allclose(
+        made["stem_diameter_change"].sel(probe="B"), [0, 5e-6, 1e-5, 2e-5], rtol=0, atol=1e-18
+    )
+    assert made["stem_diameter_change"].sel(probe="A").isnull().all()
+
+
 def test_logs_of_unlike_intervals_make_a_cube_each():
     channels = CHANNELS + "\nslow,one,probe,B,heated_emf,mV,,2031-06-01 00:20"
     site = site_by_hand(probes=PROBES, trees=TREES, channels=channels)

@@ -5,7 +5,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-from hypothesis import given, settings
+from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 from log_by_hand import HEAD, column, ends, read, reasons, same_bytes
 
@@ -173,8 +173,13 @@ def test_a_long_table_in_the_repeated_hour():
     st.randoms(use_true_random=False),
 )
 def test_parts_of_a_log_with_gaps_in_any_order(step, lost, cuts, random):
+    # Where records are lost inside the hour and a file ends there as well, several readings are
+    # equally good: those are left out.
     lines = autumn(step=step, skip=lost if step == 10 else ())
     cuts = sorted(min(cut, len(lines)) for cut in cuts)
+    inside = [" 02:" in line for line in lines]
+    if step == 10 and any(all(inside[cut - 1 : cut + 1]) for cut in cuts):
+        assume(not lost & set(range(3, 15)))
     parts = [HEAD + "".join(lines[a:b]) for a, b in pairwise([0, *cuts, len(lines)])]
     parts.append(random.choice(parts))
     random.shuffle(parts)

@@ -23,7 +23,8 @@ def test_flux_density_of_the_published_calibration(index, cm_per_hour, last_digi
 
 
 def test_worked_example():
-    # Granier (1985) by hand: (10 - 8) / 8 = 0.25; 118.99 * 0.25**1.231 = 21.6 g m-2 s-1.
+    # Granier (1985), from memory, by hand: (10 - 8) / 8 = 0.25; 118.99 * 0.25**1.231 = 21.6 in
+    # g m-2 s-1.
     index = dissipation.flow_index(10.0, 8.0)
     assert index == 0.25
     assert dissipation.flux_density(index) * 1e3 == pytest.approx(21.6, abs=0.05)
@@ -39,7 +40,8 @@ def test_inverse_agrees_with_the_published_inverse():
 
 @pytest.mark.parametrize(
     ("index", "factor"),
-    # 1.231 (1 + K) / K by hand, one decimal.
+    # Derivative of the calibration of Granier (1985), exponent from memory: 1.231 (1 + K) / K,
+    # calculated, one decimal.
     [(0.05, 25.9), (0.1, 13.5), (0.2, 7.4), (0.3, 5.3), (0.5, 3.7), (1.0, 2.5)],
 )
 def test_amplification_of_baseline_errors(index, factor):
@@ -57,8 +59,9 @@ def test_amplification_is_the_slope_of_the_calibration():
 
 @pytest.mark.parametrize(
     ("night", "day", "share"),
-    # Flow at night taken for none: by hand from the index. For the first: the reading at night
-    # is 10/1.05 = 9.524 and by day 10/1.3 = 7.692; 1.83/7.69 = 0.238; (0.238/0.3)**1.231 = 0.75.
+    # Flow at night taken for none, by the exponent of Granier (1985), from memory: by hand from
+    # the index. For the first: the reading at night is 10/1.05 = 9.524 and by day 10/1.3 = 7.692;
+    # 1.83/7.69 = 0.238; (0.238/0.3)**1.231 = 0.75.
     [(0.05, 0.3, 0.75), (0.02, 0.3, 0.90), (0.05, 0.15, 0.57), (0.02, 0.15, 0.82)],
 )
 def test_night_flow_taken_for_zero_flow_lowers_the_day(night, day, share):

@@ -64,6 +64,24 @@ def test_shares_of_flags_are_between_zero_and_one(run):
 def test_an_offset_from_too_few_nights_is_not_used_and_the_reason_is_told(run):
     # P16 was removed before five humid nights had passed
     (life,) = run.table("installations").query("probe == 'P16'").to_dict("records")
-    assert life["zero_offset_nights_accepted"] < 2 * 5  # two points, five nights each are needed
+    assert life["zero_ratio_nights_accepted"] < 2 * 5  # two points, five nights each are needed
     assert life["unusable_offset_fraction"] == 1
     assert life["usable_fraction"] == 0
+
+
+def test_the_nights_of_an_installation_are_those_of_its_table(run):
+    lives = run.table("installations").query("method == 'heat_dissipation'")
+    nights = run.table("zero_flow_nights").groupby(["probe", "installation"])
+    assert lives["zero_flow_nights"].sum() > 0
+    for life in lives.itertuples():
+        own = nights.get_group((life.probe, life.installation))
+        added = (own["accepted_if_wetter"] == 1) & (own["accepted"] == 0)
+        lost = (own["accepted_if_drier"] == 0) & (own["accepted"] == 1)
+        assert life.zero_flow_nights_added == added.sum()
+        assert life.zero_flow_nights_lost == lost.sum()
+        assert life.zero_flow_admissible == own["admissible"].all()
+        # Drier air never lets a night in that counts as it is, wetter air never bars one.
+        assert not ((own["accepted_if_drier"] == 1) & (own["accepted"] == 0)).any()
+        assert not ((own["accepted_if_wetter"] == 0) & (own["accepted"] == 1)).any()
+    others = run.table("installations").query("method != 'heat_dissipation'")
+    assert others["zero_flow_admissible"].isna().all()

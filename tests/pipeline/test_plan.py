@@ -7,7 +7,7 @@ from pathlib import Path
 import pytest
 
 from sapflux.errors import RecipeError
-from sapflux.pipeline.plan import check_plan, plan_faults
+from sapflux.pipeline.plan import check_plan, methods_beside, plan_faults
 from sapflux.pipeline.recipe import find_recipe, load_recipe, read_recipe
 from sapflux.site.load import load_site
 
@@ -46,13 +46,13 @@ def test_missing_weather_names_the_methods_that_do_without():
     dry = without(SITE, "channels", lambda row: row.quantity != "relative_humidity")
     found = faults(dry)
     assert found == [
-        f"{RECIPE}, [[heat_dissipation]] step 3: stage 'zero_flow_difference', method "
+        f"{RECIPE}, [[heat_dissipation]] step 5: stage 'zero_flow_difference', method "
         "'quiet_nights', needs vapour_pressure_deficit, which neither the site nor an earlier "
         "stage gives. The site would give it by channels of kind site: vapour_pressure_deficit, "
         "or air_temperature and relative_humidity. Methods that do without: nightly_maximum, "
-        "moving_window; change it in a copy of the recipe (`sapflux stages --recipe NAME` prints "
-        "one).",
-        f"{RECIPE}, [[heat_ratio]] step 5: stage 'zero_offset', method 'quiet_nights', needs "
+        "moving_window, double_regression; change it in a copy of the recipe (`sapflux stages "
+        "--recipe NAME` prints one).",
+        f"{RECIPE}, [[heat_ratio]] step 4: stage 'zero_flow_ratio', method 'quiet_nights', needs "
         "vapour_pressure_deficit, which neither the site nor an earlier stage gives. The site "
         "would give it by channels of kind site: vapour_pressure_deficit, or air_temperature and "
         "relative_humidity. Methods that do without: all_nights; change it in a copy of the recipe "
@@ -88,7 +88,7 @@ def test_a_missing_stage_is_named():
         f"{RECIPE}, [[heat_dissipation]] step {step}: stage {name!r} needs zero_flow_difference, "
         "which neither the site nor an earlier stage gives. Add a stage that makes it before "
         "this one."
-        for step, name in [(3, "sapwood_contact"), (4, "flow_index")]
+        for step, name in [(5, "sapwood_contact"), (6, "flow_index")]
     ]
 
 
@@ -137,3 +137,65 @@ def test_a_species_without_its_own_calibration_where_the_recipe_wants_one():
         f"{FOLDER}/species.csv, row 2: species 'spruce' has no calibration and the recipe uses the "
         "species' own. Add it to calibrations.csv."
     )
+
+
+def with_probe(name, **changes):
+    rows = tuple(
+        row.model_copy(update=changes) if row.probe == name else row for row in SITE.table("probes")
+    )
+    return replace(SITE, tables={**SITE.tables, "probes": rows})
+
+
+def wound_by(method, beside=()):
+    def edit(raw):
+        step = next(step for step in raw["heat_ratio"] if step["stage"] == "wound")
+        step.pop("beside", None)
+        step |= {"method": method} | ({"beside": beside} if beside else {})
+
+    return changed(edit)
+
+
+def test_the_published_wound_is_refused_for_needles_or_windows_it_was_not_made_for():
+    line = next(
+        line
+        for row, line in zip(SITE.table("probes"), SITE.rows_at["probes"], strict=True)
+        if row.probe == "P16"
+    )
+    early = with_probe("P16", window_from_s=30.0, window_to_s=60.0)
+    end = (
+        "and the published wound correction is for 6 mm and 60 to 100 s. Take method 'strip' of "
+        "the stage 'wound' in a copy of the recipe (`sapflux stages --recipe NAME` prints one)."
+    )
+    where = f"{SITE.folder}/probes.csv, row {line}: probe 'P16' has"
+    assert faults(early) == [f"{where} a window of 30 to 60 s, {end}"]
+    short = with_probe("P16", spacing_downstream_mm=5.0, spacing_upstream_mm=5.0, window_from_s=30)
+    assert faults(short) == [
+        f"{where} needles 5 and 5 mm from the heater and a window of 30 to 100 s, {end}"
+    ]
+    assert faults(early, wound_by("strip")) == []
+    assert faults(early, wound_by("strip", ["published"])) == faults(early)
+    # As near as drilling comes, and blank, it holds.
+    near = {"spacing_downstream_mm": 6.4, "window_from_s": 62.0, "window_to_s": None}
+    assert faults(with_probe("P16", **near)) == []
+
+
+def test_a_strip_for_another_estimator_than_the_ratio_has_is_refused():
+    def edit(raw):
+        steps = {step["stage"]: step for step in raw["heat_ratio"]}
+        steps["log_heat_ratio"]["estimator"] = "mean_of_logs"
+        steps["wound"] |= {"method": "strip"}
+        steps["wound"].pop("beside", None)
+
+    (fault,) = faults(SITE, changed(edit))
+    assert fault.endswith(
+        "stage 'wound' corrects a log ratio of estimator 'log_of_means', and log_heat_ratio makes "
+        "one of 'mean_of_logs'. Give both stages the same estimator."
+    )
+
+
+def test_the_published_wound_is_left_out_beside_where_it_does_not_hold():
+    early = with_probe("P16", window_from_s=30.0, window_to_s=60.0)
+    published = ("heat_ratio", "wound", "published")
+    assert published in methods_beside(SITE, wound_by("strip", "all"))[0]
+    chosen, left_out = methods_beside(early, wound_by("strip", "all"))
+    assert published in left_out and published not in chosen

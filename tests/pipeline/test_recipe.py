@@ -23,10 +23,13 @@ def test_the_default_recipe_comes_with_the_program():
     recipe = load_recipe()
     assert [step.stage.name for step in recipe.chains["heat_dissipation"]] == [
         "heated_difference",
+        "heating_cycle",
+        "natural_gradient",
         "screen_power_loss",
         "zero_flow_difference",
         "sapwood_contact",
         "flow_index",
+        "ageing",
         "flux_density",
     ]
 
@@ -36,7 +39,8 @@ def test_a_resolved_recipe_spells_out_every_setting_and_reads_back_the_same():
     resolved = recipe.resolved()
     for chain, steps in recipe.chains.items():
         for step, table in zip(steps, resolved[chain], strict=True):
-            assert table.keys() - {"stage"} == step.stage.settings.keys()
+            assert table.keys() - {"stage", "beside"} == step.stage.settings.keys()
+            assert ("beside" in table) == bool(step.beside)
     again = read_recipe({k: v for k, v in resolved.items() if k != "name"}, "again", recipe.name)
     assert again.resolved() == resolved
 
@@ -45,8 +49,8 @@ def test_an_unknown_stage_names_the_nearest():
     (fault,) = faults(HEAD + '[[heat_dissipation]]\nstage = "flow_indx"\n')
     assert fault == (
         "oak.toml, [[heat_dissipation]] step 2: no stage 'flow_indx'. Did you mean 'flow_index'? "
-        "Known: flow_index, flux_density, heated_difference, sapwood_contact, screen_power_loss, "
-        "zero_flow_difference."
+        "Known: ageing, flow_index, flux_density, heated_difference, heating_cycle, "
+        "natural_gradient, sapwood_contact, screen_power_loss, zero_flow_difference."
     )
 
 
@@ -59,7 +63,8 @@ def test_an_unknown_setting_names_the_nearest():
     (fault,) = faults(HEAD + 'metod = "constant"\n')
     assert fault == (
         "oak.toml, [[heat_dissipation]] step 1: stage 'heated_difference' has no setting 'metod'. "
-        "Did you mean 'method'? Known: assumed_stem_temperature_degC, method, "
+        "Did you mean 'method'? Known: assumed_stem_temperature_degC, "
+        "conductivity_growth_percent_per_K, method, reference_temperature_degC, "
         "sensitivity_uV_per_K."
     )
 
@@ -68,7 +73,7 @@ def test_a_setting_out_of_its_choices():
     (fault,) = faults(HEAD + 'method = "its68"\n')
     assert fault == (
         "oak.toml, [[heat_dissipation]] step 1: heated_difference: method = 'its68'. "
-        "It takes one of: its90_given, its90_measured, constant."
+        "It takes one of: its90_given, its90_and_wood, its90_alone, constant."
     )
 
 

@@ -180,10 +180,14 @@ def test_night_tables_keep_their_moments(tmp_path):
         "probe": "T1-N", "point": 1, "installation": 0, "accepted": np.True_, "records": 13.0,
         "noon_before_utc": np.datetime64("2031-06-01T11:12:13"), "time_utc": pd.NaT,
         "difference_K": 9.87654, "mean_deficit_kPa": 0.04321, "variation": 0.0012345,
-        "baseline_K": np.nan,
+        "baseline_K": np.nan, "baseline_error_K": 0.01234, "admissible": np.False_,
+        "accepted_if_drier": False, "accepted_if_wetter": True, "noise_K": 0.00456,
+        "lowest_temperature_degC": -0.126, "power_change": 0.0201, "visited": False, "rained": True,
+        "swelling_um_h": np.nan, "below_highest_um": 3.26,
     }  # fmt: skip
     assert written(tmp_path, pd.DataFrame([row]), "zero_flow_nights").splitlines()[1] == (
-        "T1-N,1,0,2031-06-01 11:12:13,,9.8765,0.0432,0.001234,13,1,,"
+        "T1-N,1,0,2031-06-01 11:12:13,,9.8765,0.0432,0.001234,13,1,,,"
+        "0.0123,0,0,1,0.0046,-0.13,0.020100,0,1,,3.3"
     )
 
 

@@ -148,7 +148,8 @@ CASES = {
                 "and probe 'b1' is of the method heat_ratio. Signals of heat_ratio: "
                 "temperature_before_downstream, temperature_after_downstream, "
                 "temperature_before_upstream, temperature_after_upstream, rise_downstream, "
-                "rise_upstream, heat_ratio, log_heat_ratio, logged_velocity."
+                "rise_upstream, heat_ratio, log_heat_ratio, logged_velocity, "
+                "temperature_trace_downstream, temperature_trace_upstream."
             )
         ],
     ),
@@ -181,8 +182,8 @@ CASES = {
                 "ridge/channels.csv, row 5: point 2 of probe 'b1' has "
                 "temperature_before_downstream and no temperature_after_downstream, "
                 "temperature_before_upstream, temperature_after_upstream. A point needs both "
-                "rises, all four temperatures, heat_ratio, log_heat_ratio or logged_velocity, for "
-                "the same time."
+                "rises, all four temperatures, both temperature traces, heat_ratio, log_heat_ratio "
+                "or logged_velocity, for the same time."
             )
         ],
     ),
@@ -199,7 +200,8 @@ CASES = {
             (
                 "ridge/channels.csv, row 6: point 2 of probe 'b1' has rise_downstream from "
                 "2026-07-01 to open and no rise_upstream. A point needs both rises, all four "
-                "temperatures, heat_ratio, log_heat_ratio or logged_velocity, for the same time."
+                "temperatures, both temperature traces, heat_ratio, log_heat_ratio or "
+                "logged_velocity, for the same time."
             )
         ],
     ),

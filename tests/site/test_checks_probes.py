@@ -216,6 +216,15 @@ CASES = {
             )
         ],
     ),
+    "two pairs of one probe at once": (
+        [("pairs.csv", "u1,a1,2026-04-01,\n", "u1,a1,2026-04-01,\nu1,a1,2026-05-01,\n")],
+        [
+            (
+                "ridge/pairs.csv, row 3: heated probe 'a1' has another unheated pair for the same "
+                "time in row 2. End one where the other begins."
+            )
+        ],
+    ),
     "pair from after to": (
         [("pairs.csv", "2026-04-01,", "2026-04-01,2026-04-01")],
         [

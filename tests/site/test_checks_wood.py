@@ -143,6 +143,40 @@ CASES = {
             )
         ],
     ),
+    "half a time course": (
+        [
+            ("wounds.csv", "width_mm,source", "width_mm,final_width_mm,time_constant_d,source"),
+            ("wounds.csv", ",2.0,own", ",2.0,2.4,,own"),
+            ("wounds.csv", ",2.1,own", ",2.1,,30,own"),
+        ],
+        [
+            (
+                "ridge/wounds.csv, row 2: the row has final_width_mm and no time_constant_d. Give "
+                "both for a wound that grows by a time course, or neither."
+            ),
+            (
+                "ridge/wounds.csv, row 3: the row has time_constant_d and no final_width_mm. Give "
+                "both for a wound that grows by a time course, or neither."
+            ),
+        ],
+    ),
+    "a wound that shrinks, and one too wide": (
+        [
+            ("wounds.csv", "width_mm,source", "width_mm,final_width_mm,time_constant_d,source"),
+            ("wounds.csv", ",2.0,own", ",2.0,1.9,30,own"),
+            ("wounds.csv", ",2.1,own", ",2.1,21,30,own"),
+        ],
+        [
+            (
+                "ridge/wounds.csv, row 2: final_width_mm 1.9 is less than width_mm 2. A wound "
+                "grows: give in width_mm the width at `date`, in final_width_mm the last one."
+            ),
+            (
+                "ridge/wounds.csv, row 3: final_width_mm is 21. Give the width of wounded wood "
+                "across the needles in mm: it lies between 0.5 and 6."
+            ),
+        ],
+    ),
     "profile of nothing": (
         [
             (

@@ -83,7 +83,9 @@ def test_every_fact_of_probes_is_laid_with_its_name_and_units(early):
         row.name for row in schema.ROWS if row.dims[:1] == ("probe",)
         and row.dims in (("probe",), ("probe", "point"), ("probe", "relative_depth"))
     }  # fmt: skip
-    assert set(early) == of_probes | {"installation"}
+    assert set(early) == of_probes | {
+        "installation", "installed_age", "paired", "power_off", "visited", "at_rest",
+    }  # fmt: skip
     for name, array in early.items():
         assert array.name == name
         assert array.attrs["units"] == schema.VARIABLES[name].units
@@ -158,6 +160,19 @@ def test_two_installations_have_their_own_depths_and_contact(site):
     np.testing.assert_allclose(laid["contact_fraction"][0, 0], [0.75, 0.75, 0.9])  # given: 0.9
     assert laid["installation"].values.tolist() == [[0, 0, 1], [0, 0, 0]]
     assert laid["spacing_downstream"].dims == ("probe",)
+
+
+def test_age_counts_from_the_installation_to_the_middle_of_a_record(site):
+    times = ends("2031-05-05T23:30", "2031-05-06T00:30")
+    laid = facts.lay_facts(site, PROBES, 2, times, HALF_HOUR)
+    # 4 days and 23.25 h and 23.75 h after 1 May; then a quarter of an hour after 6 May.
+    hours = [[4 * 24 + 23.25, 4 * 24 + 23.75, 0.25], [119.25, 119.75, 120.25]]
+    np.testing.assert_allclose(laid["installed_age"].values / 3600, hours, rtol=1e-14)
+
+
+def test_probes_are_grouped_by_tree_and_by_stand_and_species(early):
+    assert early["probe_tree"].values.tolist() == ["T1", "T2"]
+    assert early["probe_stratum"].values.tolist() == ["upper/oak", "upper/fir"]
 
 
 def test_wood_is_a_line_between_samples_and_constant_outside(site):
@@ -316,3 +331,39 @@ def test_a_site_without_surveys_has_no_stands():
     assert laid["sapwood_per_ground"].sizes == {"stand_species": 0}
     assert isinstance(laid["in_leaf"], xr.DataArray)
     assert laid["in_leaf"].shape == (0, 49)
+
+
+def test_wounds_grow_by_their_time_course_until_the_next_date():
+    tables = TABLES | {
+        "wounds": """
+            probe,tree,species,date,width_mm,final_width_mm,time_constant_d,source
+            H,,,2031-05-01,1.8,2.4,4,section at removal
+            A,,,2031-05-01,1.6,,,assumed
+            A,,,2031-05-03,1.8,2.8,10,time course of a sister probe
+            A,,,2031-05-05,2.0,,,measured
+        """
+    }
+    middles = ["2031-04-20T00:15", "2031-05-02T00:15", "2031-05-04T00:15", "2031-05-05T12:15"]
+    laid = facts.lay_facts(
+        site_by_hand(**tables), PROBES, 2, np.array(middles, "datetime64[s]"), HALF_HOUR
+    )["wound_width"]
+    assert laid.dims == ("probe", "time")
+    # H: at its date at most; 1 and 3 and 4.5 days of 4 by w(t) = 2.4 - 0.6 exp(-t / 4).
+    course = 2.4 - 0.6 * np.exp(-np.array([0.0, 1.0, 3.0, 4.5]) / 4.0)
+    np.testing.assert_allclose(laid[1] * 1e3, course, rtol=1e-12)
+    # A: halfway from 1.6 to 1.8 by a line; a day of ten by the course; then what was measured.
+    grown = 2.8 - 1.0 * np.exp(-0.1)
+    np.testing.assert_allclose(laid[0] * 1e3, [1.6, 1.7, grown, 2.0], rtol=1e-12)
+
+
+def test_a_growing_wound_of_a_record_does_not_hang_on_its_block():
+    tables = TABLES | {
+        "wounds": """
+            probe,tree,species,date,width_mm,final_width_mm,time_constant_d,source
+            ,T2,,2031-05-01,1.8,2.4,20,assumed
+        """
+    }
+    site, times = site_by_hand(**tables), ends("2031-05-02T00:30", "2031-05-04T00:00")
+    lay = lambda part: facts.lay_facts(site, ["H"], 2, part, HALF_HOUR)["wound_width"].values  # noqa: E731
+    parts = [lay(times[:17]), lay(times[17:40]), lay(times[40:])]
+    assert np.concatenate(parts, axis=1).tobytes() == lay(times).tobytes()

@@ -12,7 +12,9 @@ PROBES = """
     probe,tree,method,height_m,depth_from_mm,depth_to_mm,installed,spacing_downstream_mm
     A,T1,heat_ratio,1.3,0,20,2031-05-01,6
 """
-OF_PROBES = {"installation", "radial_from", "radial_to", "spacing_downstream"}
+OF_PROBES = {
+    "installation", "installed_age", "probe_tree", "radial_from", "radial_to", "spacing_downstream",
+}  # fmt: skip
 
 
 def test_every_fact_that_is_laid_has_a_source_of_columns_that_exist():
@@ -46,8 +48,11 @@ def test_a_column_counts_where_a_row_has_it_set():
         ),
         ({"species": "species,anatomy\nfir,conifer"}, {"in_leaf"}),
         ({"surveys": "plot,stem,species,date,diameter_cm\nP,T,fir,2030-04-01,9"}, {"xylem_radius"}),
-        ({"trees": "tree,stand,species,diameter_cm\nT1,upper,fir,20"}, {"xylem_radius"}),
-        ({"trees": "tree,stand,species\nT1,upper,fir"}, set()),
+        (
+            {"trees": "tree,stand,species,diameter_cm\nT1,upper,fir,20"},
+            {"xylem_radius", "probe_stratum"},
+        ),
+        ({"trees": "tree,stand,species\nT1,upper,fir"}, {"probe_stratum"}),
         ({"plots": "plot,stand,plan_area_m2\nP1,upper,400"}, set()),
         (
             {

@@ -64,7 +64,7 @@ def table_of(stage, arrays, *, block_days=None, **changed):
         rows.append(part[(start >= first) & (start < last)])
     rows = pd.concat([part for part in rows if len(part)] or rows[:1], ignore_index=True)
     rows = rows.sort_values(["probe", "point", "start"], kind="stable", ignore_index=True)
-    return bind(stage.fit, {"rows": rows}, settings)
+    return bind(stage.fit, {"rows": rows}, settings) if stage.fit else rows
 
 
 def evaluated(stage, arrays, table, *, block_days=None, **changed):
@@ -96,4 +96,4 @@ def _blocks(time, reach_s, days):
 
 
 def _cut(arrays, block):
-    return {name: array.isel(time=block) for name, array in arrays.items()}
+    return {n: a.isel(time=block) if "time" in a.dims else a for n, a in arrays.items()}

@@ -17,6 +17,7 @@ from sapflux.site.tables import Channel, Pair, Plot, Probe, Survey, Tree
 from sapflux.virtual import truth as tables
 from sapflux.virtual.copy import grow_copy, period, write_copy
 from sapflux.virtual.copy_channels import SUPPORTED
+from sapflux.virtual.copy_values import log_values, stem_diameter_change
 from sapflux.virtual.forest import effective_area
 
 SITE = load_site(Path(__file__).parents[2] / "configs" / "orvelin")
@@ -358,6 +359,7 @@ def test_every_supported_quantity_is_written_and_others_are_told(tmp_path):
                 for when in ("before", "after") for where in ("down", "up")),
               ("probe", "N3", 1, "heat_ratio", "1"),
               ("tree", "U2-05", 1, "stem_temperature", "degF"),
+              ("tree", "U2-05", 1, "stem_diameter_change", "um"),
               ("site", "", 1, "vapour_pressure_deficit", "kPa"),
               ("site", "", 1, "net_radiation", "W m-2"),
               ("site", "", 1, "discharge", "L s-1"),
@@ -375,8 +377,7 @@ def test_every_supported_quantity_is_written_and_others_are_told(tmp_path):
     shown = {row.quantity for row in copy.table("channels")}
     assert shown == SUPPORTED
     assert [text for text in truth.left_out if text.startswith("channel")] == [
-        "channel n3 of log upper: heater_current is not supported",
-        "channel n14 of log upper: discharge is not supported",
+        "channel n15 of log upper: discharge is not supported",
     ]
     values = parsed(copy)["upper"]
     assert np.isfinite(values).all()
@@ -388,6 +389,110 @@ def test_every_supported_quantity_is_written_and_others_are_told(tmp_path):
     assert 0.6 < share.min() < 0.99 and 0.98 < share.max() < 1.01
     assert truth.point_flux("N1").shape == (2, len(truth.weather.end))
     assert copy.table("pairs") == pairs
+
+
+def test_an_unheated_pair_shows_what_its_stem_adds_to_the_heated_one():
+    """Of a steep gradient, in kelvin: the heated probe with it less that without is the pair's."""
+    unheated = probe("N2", "U2-05", "unheated_pair", "0", "20")
+    pair = Channel(log="upper", column="pair", kind="probe", id="N2",
+                   quantity="unheated_difference", unit="K")  # fmt: skip
+    heated = next(row for row in SITE.table("probes") if row.tree == "U2-05")
+    assert heated.method == "heat_dissipation"
+    kelvin = Channel(log="upper", column="heated", kind="probe", id=heated.probe,
+                     quantity="heated_difference", unit="K")  # fmt: skip
+    pairs = (Pair(unheated="N2", heated=heated.probe),)
+    probes = (*SITE.table("probes"), unheated)
+    site = with_tables(SITE, probes=probes, channels=(kelvin, pair), pairs=pairs)
+    shown = []
+    for gradients in (True, False):
+        truth, plan = grow_copy(site, seed=2, days=6, gradients=gradients)
+        truth = replace(truth, gradients={name: 10.0 * g for name, g in truth.gradients.items()})
+        parts = {
+            name: tuple(replace(part, gradient=10.0 * part.gradient) for part in own)
+            if name == heated.probe else own
+            for name, own in truth.probes.items()
+        }  # fmt: skip
+        rows = [row for row in plan.channels if row.column in ("heated", "pair")]
+        shown.append(log_values(replace(truth, probes=parts), site, rows, 1))
+    added = shown[0] - shown[1]
+    assert np.ptp(added[:, 1]) > 0.1
+    # a type T pair gives 0.1 % more for each kelvin of wood: at 10 K above the reference 1 %
+    np.testing.assert_allclose(added[:, 0], added[:, 1], rtol=0.03, atol=1e-4)
+
+
+def test_a_dendrometer_shrinks_with_flow_and_is_level_once_the_store_is_full():
+    """By hand: at a steady flow the store lacks lag * flow; 1.5 um for each kg m-2 of sapwood."""
+    truth, _ = grow_copy(SITE, seed=2, days=20)
+    stem = truth.known["U2-05"].stem
+    change = stem_diameter_change(truth, "U2-05")
+    flow = truth.tree_flow("U2-05") / stem.sapwood_area
+    lag = truth.species[stem.species].response.storage_lag
+    grown = change + 1.5e-6 * lag * (flow - flow[0])
+    growth = np.diff(grown)
+    np.testing.assert_allclose(growth, growth[0], rtol=1e-6)  # a straight line of growth
+    assert 0.5e-3 < growth[0] * 150 * 144 < 3.0e-3
+    days = (change - grown).reshape(20, 144)
+    hours = (np.arange(144) + 0.5) / 6.0
+    assert (20e-6 < np.ptp(days, axis=1)).sum() > 12  # tens of micrometres on a sunny day
+    deepest = hours[np.argmin(days, axis=1)]
+    assert 11.0 < np.median(deepest) < 18.0
+    before_dawn = np.abs(np.diff(days[:, 12:24], axis=1)).max(axis=1)
+    assert np.median(before_dawn) < 0.02 * np.median(np.ptp(days, axis=1))
+
+
+def test_a_site_with_traces_cycles_and_growing_wounds_is_copied_in_a_simpler_way(tmp_path):
+    """Each simplification is named, and the pipeline runs on the copy."""
+    probes = tuple(
+        row.model_copy(update={"heating_on_min": 10.0, "heating_off_min": 10.0})
+        if row.probe == "P11" else row
+        for row in SITE.table("probes")
+    )  # fmt: skip
+    kept = [row for row in SITE.table("channels") if row.log != "pulse_a"]
+    traces = [
+        Channel(log="pulse_a", column=f"P16_{side}", kind="probe", id="P16",
+                quantity=f"temperature_trace_{side}stream", unit="degC")
+        for side in ("down", "up")
+    ]  # fmt: skip
+    battery = next(row for row in SITE.table("channels") if row.column == "battery")
+    log = SITE.logs["pulse_a"].model_copy(update={"trace_step_s": 1.0, "pulse_starts_s": 30.0})
+    wounds = tuple(
+        row.model_copy(update={"final_width_mm": row.width_mm + 0.3, "time_constant_d": 40.0})
+        for row in SITE.table("wounds")
+    )
+    stranger = Tree(tree="X1", stand="upper", species="spruce")
+    growing = Channel(log="upper", column="D", kind="tree", id="X1",
+                      quantity="stem_diameter_change", unit="mm")  # fmt: skip
+    site = with_tables(SITE, probes=probes, channels=(*kept, *traces, battery, growing),
+                       wounds=wounds, trees=(*SITE.table("trees"), stranger))  # fmt: skip
+    site = replace(site, logs={**SITE.logs, "pulse_a": log})
+    truth = write_copy(site, tmp_path / "copy", seed=1, days=4)
+    told = "\n".join(truth.left_out)
+    for part in ("heating cycle of probe P11", "traces of pulses", "widths that grow",
+                 "diameter of tree X1"):  # fmt: skip
+        assert part in told
+    copy = load_site(tmp_path / "copy")
+    assert copy.logs["pulse_a"].trace_step_s is None
+    assert {c.quantity for c in copy.table("channels") if c.id == "P16"} == {
+        "rise_downstream", "rise_upstream",
+    }  # fmt: skip
+    run = run_site(tmp_path / "copy", out=tmp_path / "out")
+    assert run.table("ledger")["rejected"].sum() == 0
+
+
+def test_a_measured_diffusivity_is_the_woods_and_is_carried(tmp_path):
+    """Given 0.0031 cm2 s-1: the copy's wood has it, its table says it exactly or within 15 %."""
+    wood = tuple(row.model_copy(update={"diffusivity_cm2_s": 0.0031}) for row in SITE.table("wood"))
+    site = with_tables(SITE, wood=wood)
+    for knowledge, bound in (("exact", 1e-9), ("estimated", 0.15)):
+        folder = tmp_path / knowledge
+        truth = write_copy(site, folder, seed=3, days=2, knowledge=knowledge)
+        assert truth.probes["P16"][0].wood_diffusivity == pytest.approx(3.1e-7)
+        shown = {row.diffusivity_cm2_s for row in load_site(folder).table("wood")}
+        off = np.array([value / 0.0031 - 1.0 for value in shown])
+        assert np.abs(off).max() < bound
+        assert knowledge == "exact" or np.abs(off).min() > 1e-4
+    truth, _ = grow_copy(SITE, seed=3, days=2)
+    assert truth.probes["P16"][0].diffusivity is None
 
 
 def probe(name, tree, method, begin, end, **more):

@@ -95,14 +95,14 @@ def test_trees_differ_by_a_quarter_or_more(truth):
     seasons = defaultdict(list)
     for stem in truth.stems:
         if stem.alive:
-            seasons[stem.species].append(truth.flow[stem.name].sum() / stem.sapwood_area)
+            seasons[stem.species].append(truth.tree_flow(stem.name).sum() / stem.sapwood_area)
     for species in ("spruce", "beech", "oak"):
         flow = np.array(seasons[species])
         assert flow.std(ddof=1) / flow.mean() >= 0.25
 
 
 def test_sapwood_against_the_needle(truth):
-    for stem in truth.instrumented():
+    for stem in demo_forest.instrumented(truth):
         if stem.species == "spruce":
             assert stem.sapwood_depth >= 0.040
         elif stem.species == "oak":
@@ -112,7 +112,7 @@ def test_sapwood_against_the_needle(truth):
 
 
 def test_some_flow_on_dry_nights_and_hardly_any_on_quiet_ones(truth):
-    flow = truth.outer[truth.instrumented()[0].name].reshape(-1, 144)
+    flow = truth.outer(demo_forest.instrumented(truth)[0].name).reshape(-1, 144)
     before_dawn, noon = flow[:, 18:30].mean(axis=1), flow[:, 66:84].mean(axis=1)
     quiet = quiet_nights(truth.weather, 1.0)
     dry = ~quiet & (noon > np.median(noon))
@@ -175,7 +175,11 @@ def test_allometry_is_near_the_truth(truth):
 def test_power_loss_shows_in_all_heated_signals_and_only_there(truth):
     on = demo_signals.powered_share("upper", truth.weather.end, 600)
     assert (on < 0.5).sum() == 18 * 6
-    dissipation = {group.log: probe for group, probe in truth.probes if group.log != "pulse_a"}
+    dissipation = {
+        group.log: probe
+        for group, probe in demo_forest.grouped_probes(truth)
+        if group.log != "pulse_a"
+    }
     emf = demo_signals.dissipation_emf(truth, dissipation["upper"], on)
     lost = np.flatnonzero(on == 0.0)
     assert np.abs(emf[lost[3:]]).max() < 0.02 * emf.max()

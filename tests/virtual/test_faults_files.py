@@ -7,14 +7,18 @@ import numpy as np
 import pytest
 
 from sapflux import run_site
+from sapflux.ingest.ledger import ledger_table
+from sapflux.ingest.logs import read_log
 from sapflux.ingest.parse import parse
 from sapflux.ingest.text import as_utf8
 from sapflux.site.load import load_site
+from sapflux.site.tables import Channel
 from sapflux.virtual import truth as tables
 from sapflux.virtual.copy import grow_copy, write_copy
 from sapflux.virtual.copy_files import downloads
 from sapflux.virtual.faults import KINDS, Injected
 from sapflux.virtual.faults_clock import drifted
+from sapflux.virtual.faults_kinds import AFTER, BEFORE
 from sapflux.virtual.faults_tree import with_deaths
 
 SITE = load_site(Path(__file__).parents[2] / "configs" / "orvelin")
@@ -156,6 +160,88 @@ def test_files_are_saved_twice_left_empty_torn_and_spoiled(grown):
     assert [line for line in again if line != lines[0]] == lines[1:]
 
 
+def test_a_new_column_leaves_what_the_others_hold(grown):
+    clean = files_with(grown)
+    added = fault("column_added", "2032-05-20", "2032-06-14T23:00")
+    again = fault("header_again", *WHOLE, 1.0, path(FIRST))
+    for faults in ((added,), (added, again)):
+        made = files_with(grown, *faults)
+        before, after = read(clean[path(FIRST)]), read(made[path(FIRST)])
+        assert set(after[1]) - set(before[1]) == {"lithium_V"}
+        new = after[0] > np.datetime64("2032-05-20")
+        assert np.isnan(after[1]["lithium_V"][~new]).all()
+        np.testing.assert_allclose(after[1]["lithium_V"][new], 3.6, atol=0.2)
+        for name, values in before[1].items():
+            np.testing.assert_array_equal(values, after[1][name])
+
+
+def test_a_decimal_comma_in_mid_file_spares_the_stamps(grown):
+    clean = files_with(grown)[path(FIRST)].decode().splitlines()
+    comma = fault("decimal_comma", "2032-05-26T23:00", WHOLE[1], 4.0, path(FIRST))
+    made = files_with(grown, comma)[path(FIRST)].decode().splitlines()
+    changed = [n for n, pair in enumerate(zip(clean, made, strict=True)) if len(set(pair)) > 1]
+    assert changed == list(range(len(clean) - 4 * 48, len(clean)))
+    for n in changed:
+        stamp, _, numbers = clean[n].partition(",")
+        assert made[n] == f"{stamp},{numbers.replace('.', ',')}"
+
+
+def test_lines_are_garbled_and_repeated(grown):
+    clean = files_with(grown)[path(FIRST)].decode().splitlines()
+    few = fault("garbled_line", *WHOLE, 3.0, path(FIRST))
+    made = files_with(grown, few)[path(FIRST)].decode().splitlines()
+    ((old, new),) = [p for p in zip(clean, made, strict=True) if len(set(p)) > 1]
+    assert len(old) == len(new)
+    assert sum(a != b for a, b in zip(old, new, strict=True)) <= 3
+    twice = fault("repeated_lines", *WHOLE, 60.0, path(FIRST))
+    made = files_with(grown, twice)[path(FIRST)].decode().splitlines()
+    assert len(made) == len(clean) + 60
+    assert list(dict.fromkeys(made)) == clean
+
+
+@pytest.fixture(scope="module")
+def short():
+    return grow_copy(SITE, seed=2, days=5)
+
+
+@pytest.mark.parametrize("log", SITE.logs)
+def test_the_reader_accounts_for_every_line_of_every_spoiled_file(short, log, tmp_path):
+    """The classes of the ledger sum to the lines; only lines that were struck are rejected."""
+    truth, plan = short
+    one = replace(plan, logs={log: plan.logs[log]},
+                  channels=tuple(row for row in plan.channels if row.log == log))  # fmt: skip
+    column = one.channels[0].column
+    begin, end = truth.weather.end[0], truth.weather.end[-1]
+    late = end - 2 * DAY
+    rejected = {}
+    ((name, _),) = downloads(truth, SITE, one)
+    for kind, start, size in (
+        ("column_added", begin, 1.0), ("decimal_comma", late, 2.0), ("repeated_lines", begin, 30.0),
+        ("garbled_line", begin, 4.0), ("text_code", late, 48.0), ("header_again", begin, 1.0),
+    ):  # fmt: skip
+        struck = Injected(kind, log, name if kind != "text_code" else column, start, end, size, "",
+                          1, (column,) if kind == "text_code" else ())  # fmt: skip
+        folder = tmp_path / kind
+        ((name, content),) = downloads(replace(truth, faults=(struck,)), SITE, one)
+        (folder / name).parent.mkdir(parents=True)
+        (folder / name).write_bytes(content)
+        channels = tuple(r for r in SITE.table("channels") if r.log == log)
+        site = replace(SITE, folder=folder, logs=one.logs, layouts=one.layouts,
+                       tables={**SITE.tables, "channels": channels})  # fmt: skip
+        ledger = ledger_table(read_log(site, log)).iloc[0]
+        classes = ledger[["header", "kept", "duplicate", "conflicting", "rejected", "blank",
+                          "outside"]]  # fmt: skip
+        assert classes.sum() == ledger["lines"] == content.decode().count("\n"), kind
+        rejected[kind] = ledger["rejected"]
+        if kind == "repeated_lines":
+            assert ledger["duplicate"] == 30
+    every_s = round(one.logs[log].interval_min * 60)
+    assert rejected["column_added"] == rejected["repeated_lines"] == rejected["header_again"] == 0
+    assert rejected["garbled_line"] <= 1
+    assert 0 < rejected["decimal_comma"] <= 2 * 86400 // every_s
+    assert rejected["text_code"] in (0, 2 * 86400 // every_s)  # INF is no value, ERROR no number
+
+
 def test_a_dead_tree_takes_its_flow_out_of_the_truth_and_its_probes(grown):
     truth, plan = grown
     tree = truth.probes["P16"][0].tree
@@ -180,7 +266,7 @@ def test_a_dead_tree_takes_its_flow_out_of_the_truth_and_its_probes(grown):
     assert swing[1] < 0.2 * swing[0]
 
 
-FEW_PROBES = {"P01", "P02", "P11", "P16", "P17"}
+FEW_PROBES = {"P01", "P02", "P11", "P16", "P20"}
 
 
 def test_the_pipeline_runs_to_its_end_with_many_faults(tmp_path):
@@ -188,7 +274,15 @@ def test_the_pipeline_runs_to_its_end_with_many_faults(tmp_path):
     channels = tuple(
         row for row in SITE.table("channels") if row.kind != "probe" or row.id in FEW_PROBES
     )
-    site = replace(SITE, tables={**SITE.tables, "probes": probes, "channels": channels})
+    # P16 keeps temperatures at its outer point and a bare ratio at the inner one.
+    channels = [row for row in channels if row.id != "P16"]
+    channels += [
+        Channel(log="pulse_a", column=name, kind="probe", id="P16", point=point, quantity=name,
+                unit=unit)
+        for point, name, unit in (*((1, name, "degC") for name in (*BEFORE, *AFTER)),
+                                  (2, "heat_ratio", "1"))
+    ]  # fmt: skip
+    site = replace(SITE, tables={**SITE.tables, "probes": probes, "channels": tuple(channels)})
     truth = write_copy(site, tmp_path / "copy", seed=1, days=42, faults="many")
     assert {fault.kind for fault in truth.faults} >= set(KINDS) - {"frost"}
     run = run_site(tmp_path / "copy", out=tmp_path / "out")

@@ -1,5 +1,6 @@
 """Weather from given series: the means and sums of a real year, and a copy that lives in it."""
 
+import json
 import warnings
 from dataclasses import replace
 from pathlib import Path
@@ -8,11 +9,14 @@ import numpy as np
 import pytest
 
 from sapflux import run_site
+from sapflux.cli import main
 from sapflux.constants import ZERO_CELSIUS
+from sapflux.errors import SiteError
 from sapflux.physics import sun
 from sapflux.site.load import load_site
 from sapflux.virtual.copy import grow_copy, write_copy
 from sapflux.virtual.given import given_weather, whole_days
+from sapflux.virtual.given_table import read_weather
 from sapflux.virtual.resample import finer
 
 SITE = load_site(Path(__file__).parents[2] / "configs" / "orvelin")
@@ -177,3 +181,97 @@ def test_the_pipeline_finds_a_month_of_a_real_summer(hourly, tmp_path):
         sampled = sum(truth.sampled_mm(stand, species) for species in by_species)
         expected = sampled[[dates.index(day) for day in own["start"]]].sum()
         assert own["transpiration_mm"].sum() == pytest.approx(expected, rel=0.02)
+
+
+HEADER = "end_utc,air_temperature_degC,relative_humidity_percent,shortwave_radiation_W_m2"
+
+
+def table_of(days=4, minutes=60, more=""):
+    """Lines of a table: hours of a sine of temperature and sun from 31 May, 22 h UTC."""
+    first, lines = np.datetime64("2033-05-31T22:00"), [HEADER + more]
+    for n in range(1, days * 1440 // minutes + 1):
+        end = first + np.timedelta64(n * minutes, "m")
+        sine = np.sin((int(str(end)[11:13]) - 6) / 24 * 2 * np.pi)
+        lines.append(f"{end},{15 + 5 * sine:.1f},70,{max(600 * sine, 0.0):.1f}")
+    return lines
+
+
+def written(folder, lines):
+    path = folder / "weather.csv"
+    path.write_text("\n".join(lines) + "\n", encoding="utf-8")
+    return path
+
+
+def test_a_table_of_weather_is_what_its_columns_say(tmp_path):
+    """15 degC, 70 % and 600 sin W m-2; a clock that the logs of 10 and 30 min share with it."""
+    lines = table_of(more=",precipitation_mm,wind_speed_m_s")
+    lines[1:] = [f"{line},0.5,2.5" for line in lines[1:]]
+    lines[3] = lines[3].replace(",", "Z,", 1)
+    found = read_weather(written(tmp_path, lines), SITE)
+    assert found.step_s == 600 and len(found.end) == 4 * 144
+    assert found.air_temperature.mean() == pytest.approx(288.15, abs=1e-3)
+    np.testing.assert_allclose(found.relative_humidity, 0.7)
+    np.testing.assert_allclose(found.wind_speed, 2.5)
+    assert found.precipitation.sum() == pytest.approx(4 * 24 * 0.5)
+    assert found.shortwave_radiation.mean() == pytest.approx(600.0 / np.pi, rel=0.01)
+    calm = read_weather(written(tmp_path, table_of(minutes=15)), SITE)
+    assert calm.step_s == 300 and not calm.precipitation.any()
+
+
+def faults_of(folder, lines):
+    with pytest.raises(SiteError) as told:
+        read_weather(written(folder, lines), SITE)
+    return [
+        (fault.where.rpartition(", row ")[2] if ", row " in fault.where else "", fault.what)
+        for fault in told.value.faults
+    ]
+
+
+def test_all_faults_of_a_table_of_weather_are_told_with_their_rows(tmp_path):
+    lines = table_of(more=",precipitation_mm")
+    lines[1:] = [f"{line},0" for line in lines[1:]]
+    lines[3] = lines[3].replace(",70,", ",170,")
+    lines[5] = "2033-06-01T03:00+02:00,1,70,0,0"
+    lines[8] = lines[8].replace(",70,", ",,")
+    lines[10] = lines[10][:-1] + "x"
+    lines[12] = lines[12][:-1]
+    del lines[20]
+    assert faults_of(tmp_path, lines) == [
+        ("4", "relative_humidity_percent is '170'"),
+        ("6", "end_utc: '2033-06-01T03:00+02:00' is of another zone"),
+        ("9", "relative_humidity_percent is blank"),
+        ("11", "precipitation_mm is 'x'"),
+        ("13", "precipitation_mm is blank"),
+        ("21", "end_utc is 120 min after the row before; most rows are 60 min apart"),
+    ]
+
+
+def test_a_table_of_weather_has_two_days_of_intervals_within_a_night(tmp_path):
+    assert faults_of(tmp_path, [line.replace("_percent", "") for line in table_of()])[:2] == [
+        ("1", "unknown column 'relative_humidity'"),
+        ("1", "the column 'relative_humidity_percent' is missing"),
+    ]
+    assert "0 whole days" in faults_of(tmp_path, table_of(days=1))[0][1]
+    assert "most rows are 1440 min apart" in faults_of(tmp_path, table_of(60, 1440))[0][1]
+    assert "there are 0 rows" in faults_of(tmp_path, [HEADER])[0][1]
+    first = np.datetime64("2033-05-31T22:00:00")
+    odd = [f"{first + np.timedelta64(601 * n, 's')},15,70,0" for n in range(1, 500)]
+    odd = [HEADER, *odd]
+    assert "no step of a minute" in faults_of(tmp_path, odd)[0][1]
+
+
+def test_a_rehearsal_takes_a_table_and_says_so(tmp_path, capsys):
+    table = written(tmp_path, table_of(days=6))
+    arguments = ["rehearse", str(SITE.folder), "--weather", str(table), "--gradients", "none",
+                 "--out", str(tmp_path / "out"), "--json"]  # fmt: skip
+    assert main(arguments) == 0
+    model = json.loads(capsys.readouterr().out)["forward_model"]
+    assert model["weather"] == "given" and model["weather_table"] == "weather.csv"
+    assert model["gradients"] == "none"
+    run = tmp_path / "out" / "orvelin" / "seed_1_estimated" / "run" / "orvelin"
+    assert "2033-06-01" in (run / "daily.csv").read_text(encoding="utf-8")
+    with pytest.raises(SystemExit):
+        main([*arguments, "--years", "1"])
+    assert "not allowed with" in capsys.readouterr().err
+    assert main([*arguments[:3], str(tmp_path / "none.csv")]) == 2
+    assert "cannot be read" in capsys.readouterr().err

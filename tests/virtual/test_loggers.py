@@ -56,14 +56,12 @@ def test_header_with_units_and_aggregation():
     assert lines == ['"my logger"', '"TIMESTAMP","a","b"', '"","mV","K"', '"","Avg","Smp"']
 
 
-def test_data_lines_follow_the_order_asked_for():
+def test_records_are_lines_with_numbers_codes_and_words():
+    """12.345 in binary lies above the tie; a rounded zero has no minus."""
     layout = Layout(delimiter=";", decimal=",", quote="", time_columns=("t",))
-    cells = {
-        "a": loggers.number_cells([1.0, np.nan], 2, layout, "-6999"),
-        "b": loggers.number_cells([-0.001, 12.345], 2, layout, "-6999"),
-    }
-    lines = loggers.data_lines(layout, [("t1",), ("t2",)], cells, ["b", "a"])
-    assert lines == ["t1;0,00;1,00", "t2;12,35;-6999"]
+    values = np.array([[-0.001, 1.0], [12.345, np.nan], [np.inf, -np.inf]])
+    lines = loggers.record_lines(values, ["t1", "t2", "t3"], [2, 1], layout, "-6999")
+    assert lines == ["t1;0,00;1,0", "t2;12,35;-6999", "t3;INF;ERROR"]
 
 
 def test_last_line_may_lack_its_end():

@@ -135,6 +135,29 @@ def test_wound_halves_the_velocity_by_the_printed_cubic():
     assert shown / CM_PER_HOUR == pytest.approx(10.0, rel=1e-9)
 
 
+def test_beyond_the_published_table_a_probe_shows_a_straight_line():
+    """1.7 mm: 40 cm/h as shown are 40 (1.6565 - 0.0014 40 + 0.0002 1600) = 76.82 true, and there
+    the cubic rises by 1.6565 - 2 0.0014 40 + 3 0.0002 1600 = 2.5045 (table from memory)."""
+    true = np.array([-100.0, 70.0, 76.82, 100.0])
+    flow = true * CM_PER_HOUR * 2.691e6 / 4182.0
+    shown = sensors.apparent_velocity(pair(wound_width=1.7e-3), flow) / CM_PER_HOUR
+    beyond = 40.0 + (100.0 - 76.82) / 2.5045
+    np.testing.assert_allclose(shown[[0, 2, 3]], [-beyond, 40.0, beyond], rtol=1e-3)
+    assert 36.0 < shown[1] < 38.0
+
+
+def test_a_fast_pulse_leaves_an_upstream_rise_that_drowns_in_noise():
+    """Marshall (1958): the upstream rise over that at rest is exp(-(2 x V t + V2 t2) / 4kt).
+
+    By hand at 80 s, 6 mm, 2.47e-7 m2/s: 0.0955 at 40 and 0.0024 at 75 cm/h, of 0.86 K at 900 J/m.
+    So at 75 some 2 mK are left, the noise of a thermocouple, and what the probe shows scatters.
+    """
+    velocity = np.array([0.0, 40.0, 75.0]) * CM_PER_HOUR
+    _, up = sensors.rises(pair(pulse_length=1e-3, window=(79.0, 81.0)), velocity)
+    assert up[1] / up[0] == pytest.approx(0.0955, rel=0.05)
+    assert up[2] / up[0] == pytest.approx(0.0024, rel=0.15)
+
+
 def test_rises_at_rest_are_those_of_the_line_source():
     """Marshall (1958): q / (4 pi k t rho c) exp(-x2 / 4kt), mean of 60-100 s, short pulse.
 

@@ -3,6 +3,7 @@
 import time
 from dataclasses import replace
 from pathlib import Path
+from types import SimpleNamespace
 
 import numpy as np
 import pytest
@@ -11,7 +12,7 @@ from scipy.interpolate import CubicSpline
 from sapflux.physics import heat_pulse, wood
 from sapflux.physics.heat_pulse import CM_PER_HOUR
 from sapflux.site.load import load_site
-from sapflux.virtual import sensors, strip
+from sapflux.virtual import sensors, signals, strip
 from sapflux.virtual.copy import grow_copy
 from sapflux.virtual.copy_values import log_values
 
@@ -91,12 +92,39 @@ def test_the_table_is_odd_rises_and_meets_what_it_was_made_of():
     np.testing.assert_allclose(back[::-1], there, rtol=1e-12)
 
 
-def test_a_probe_with_a_strip_shows_its_ratio_and_not_the_cubic():
+@pytest.fixture(scope="module")
+def strip_of_two_mm():
+    """(diffusivity, reading, table) of wood of 500 kg m-3 with as much water, a pulse of 8 s."""
+    reading = strip.Reading(pulse_length=8.0)
+    diffusivity = float(wood.thermal_diffusivity(500.0, 1.0))
+    return diffusivity, reading, strip.apparent_velocities(2e-3, diffusivity, reading)
+
+
+def test_rises_of_a_probe_with_a_strip_are_those_of_the_strip(strip_of_two_mm):
+    """Each rise, not only their ratio: q / (rho c) times what finite volumes give for 1 K m2."""
+    diffusivity, reading, shown = strip_of_two_mm
+    probe = sensors.RatioProbe("P", "T", (0.01,), (0.015,), 2e-3, (0.0,), 0.0, 500.0, 1.0,
+                               shown=shown)  # fmt: skip
+    true = np.array([0.0, 23.0, -52.0]) * CM_PER_HOUR
+    flux = np.repeat(true * 2.691e6 / 4182.0, 2)[None, :]
+    stem = SimpleNamespace(sapwood_depth=0.05)
+    rises = signals.ratio_rises(probe, stem, lambda depths: np.repeat(flux, len(depths), 0), 2,
+                                lambda point: np.random.default_rng(1))  # fmt: skip
+    for index, velocity in enumerate(true):
+        by_strip = strip.unit_rises(velocity, 2e-3, diffusivity, reading)
+        for rise, one in zip(rises, by_strip, strict=True):
+            assert rise[0, index] == pytest.approx(900.0 / 2.691e6 * one, rel=2e-3)
+    assert shown.share(0.0) == 1.0
+    # 0.5 % at 23 and 6 % at 52 cm/h
+    assert shown.share(true[1]) == pytest.approx(0.995, abs=2e-3)
+    assert shown.share(true[2]) == pytest.approx(0.94, abs=0.01)
+
+
+def test_a_probe_with_a_strip_shows_its_ratio_and_not_the_cubic(strip_of_two_mm):
     flow = np.array([-0.004, 0.0, 0.02])
     probe = sensors.RatioProbe("P", "T", (0.01,), (0.015,), 2e-3, (0.0,), 0.0, 500.0, 1.0)
-    diffusivity = float(wood.thermal_diffusivity(500.0, 1.0))
-    reading = strip.Reading(pulse_length=probe.pulse_length)
-    wounded = replace(probe, shown=strip.apparent_velocities(2e-3, diffusivity, reading))
+    diffusivity, reading, shown = strip_of_two_mm
+    wounded = replace(probe, shown=shown)
     down, up = sensors.rises(wounded, sensors.apparent_velocity(wounded, flow))
     seen = heat_pulse.velocity(np.log(down / up), diffusivity, probe.spacing)
     true = flow * 4182.0 / 2.691e6  # rho c of 500 kg m-3 with as much water

@@ -1,0 +1,246 @@
+"""Methods beside the recipe's own: the chain run again with another method of one stage.
+
+The records, the days and everything else stay the same, so a difference is that method's alone.
+Only days and steps on which both have a value are compared.
+"""
+
+from dataclasses import dataclass, field
+
+import numpy as np
+import pandas as pd
+import xarray as xr
+
+from sapflux.pipeline.beside import probe_chain_beside
+from sapflux.pipeline.execute import Chain, fitted_tables, run_blocks
+from sapflux.pipeline.join import Joined
+from sapflux.pipeline.scale import scale
+from sapflux.pipeline.total_tables import days_of
+from sapflux.scaling.days import Days
+from sapflux.scaling.whole_stands import ALL
+from sapflux.site import facts
+
+SECONDS_PER_HOUR = 3600.0
+ADMISSIBLE = "admissible"  # column of an evidence table: whether the method may be used there
+ONE_DAY = np.timedelta64(1, "D")
+STAND_COLUMNS = (
+    "chain", "stage", "method", "period", "stand", "species", "start", "end", "days",
+    "recipe_mm", "beside_mm", "difference_mm",
+)  # fmt: skip
+PROBE_COLUMNS = (
+    "chain", "stage", "method", "probe", "start", "end", "compared_h",
+    "recipe_mm", "beside_mm", "difference_mm", "admissible", "spread_mm",
+)  # fmt: skip
+
+
+@dataclass(frozen=True)
+class Corrected:
+    """What a run has in memory once its probes are corrected and joined.
+
+    cubes : (method, interval) -> measured cube; answered : the same keys -> records that a
+    channel covers; probes : the joined Dataset, and `scaled` what scaling made of it;
+    weather : name -> series; days : `Days` of the recipe's own methods; evidence : their tables.
+    """
+
+    cubes: dict
+    answered: dict
+    probes: xr.Dataset
+    scaled: xr.Dataset
+    weather: dict
+    days: Days
+    evidence: dict
+
+
+@dataclass
+class Compared:
+    """Tables of the methods run beside the recipe's own."""
+
+    stands: pd.DataFrame
+    probes: pd.DataFrame
+    evidence: list = field(default_factory=list)  # (method, name of table, its rows) of each
+
+    def tables(self):
+        """The tables by the name of their file."""
+        return {"methods_beside": self.stands, "probe_methods_beside": self.probes}
+
+
+def run_beside(site, recipe, corrected, chosen, block_days):
+    """Run each of the chosen methods, and compare: `Compared`.
+
+    chosen : (chain, stage, method) as `plan.methods_beside` gives them.
+    """
+    stands, probes, evidence = [], [], []
+    own = _own_admissible(recipe, corrected)
+    for chain, stage, method in chosen:
+        other = recipe.with_method(chain, stage, method)
+        key = {"chain": chain, "stage": stage, "method": method}
+        joined, tables = corrected.probes, {}
+        if chain != "scaling":
+            joined, tables = _corrected_again(site, other, corrected, chain, block_days)
+        scaled = scale(site, other, joined, corrected.weather, block_days)
+        if scaled.stand is not None:
+            days = days_of(site, other, scaled.stand, corrected.weather)
+            stands += [key | row for row in _stand_rows(corrected.days, days)]
+        if chain != "scaling":
+            table = _table_of(other, chain, stage)
+            rows = tables.get(table)
+            if rows is not None:
+                evidence.append((method, table, rows))
+            if "probe_flow" in scaled.probes and "probe_flow" in corrected.scaled:
+                may = _admissible(rows)
+                probes += [
+                    key | row | {ADMISSIBLE: int(may.get(row["probe"], True))}
+                    for row in _probe_rows(site, corrected.scaled, scaled.probes, chain, corrected)
+                ]
+    of_probes = pd.DataFrame(probes, columns=list(PROBE_COLUMNS))
+    return Compared(
+        pd.DataFrame(stands, columns=list(STAND_COLUMNS)), with_spread(of_probes, own), evidence
+    )
+
+
+def _corrected_again(site, recipe, corrected, method, block_days):
+    """The joined probes with those of `method` corrected by the recipe, and its tables."""
+    keys = [key for key in corrected.cubes if key[0] == method]
+    ends = corrected.probes["time"].values.astype("datetime64[s]")
+    step_s = int(corrected.probes.attrs["interval_s"])
+    cubes = [corrected.cubes[key] for key in keys]
+    joined = Joined(cubes, ends, step_s, recipe.join["least_coverage"])
+    tables = {}
+    for key, cube in zip(keys, cubes, strict=True):
+        beside = probe_chain_beside(site, cube, corrected.weather)
+        chain = Chain(cube, recipe.chains[method], beside, offset=site.offset)
+        fitted = fitted_tables(chain, block_days)
+        for name, rows in fitted.items():
+            tables[name] = pd.concat([tables[name], rows]) if name in tables else rows
+        for block, working in run_blocks(chain, fitted, block_days):
+            joined.add_block(chain, block, working, corrected.answered[key])
+    return _with_probes(corrected.probes, joined.dataset()), tables
+
+
+def _with_probes(whole, part):
+    """The joined cube with the probes of `part` in the place of its own."""
+    names = [str(name) for name in whole["probe"].values]
+    rows = [names.index(str(name)) for name in part["probe"].values]
+    made = whole.copy()
+    for name in ("flux_density", "quality", "origin"):
+        values = whole[name].values.copy()
+        values[rows, : part.sizes["point"]] = part[name].values
+        made[name] = whole[name].copy(data=values)
+    return made
+
+
+def _stand_rows(ours, theirs):
+    """Rows by month and over the season, stratum by stratum and for each stand whole."""
+    for stand in dict.fromkeys(ours.stands):
+        strata = [n for n, own in enumerate(ours.stands) if own == stand]
+        groups = [(ours.species[n], [n]) for n in strata] + [(ALL, strata)]
+        for species, members in groups:
+            both = ours.valid[members].all(axis=0) & theirs.valid[members].all(axis=0)
+            for period, picked in _periods(ours):
+                used = picked[both[picked]]
+                if not len(used):
+                    continue
+                recipe, beside = (
+                    float(own.total[np.ix_(members, used)].sum()) for own in (ours, theirs)
+                )
+                yield {
+                    "period": period,
+                    "stand": stand,
+                    "species": species,
+                    "start": str(ours.dates[picked[0]]),
+                    "end": str(ours.dates[picked[-1]] + ONE_DAY),
+                    "days": len(used),
+                    "recipe_mm": recipe,
+                    "beside_mm": beside,
+                    "difference_mm": beside - recipe,
+                }
+
+
+def _periods(days):
+    """("season" or "month", places of its days) of the days that the records touch."""
+    touched = np.flatnonzero(days.touched)
+    yield "season", touched
+    months = days.dates[touched].astype("datetime64[M]")
+    for month in np.unique(months):
+        yield "month", touched[months == month]
+
+
+def _probe_rows(site, ours, theirs, method, corrected):
+    """Rows by month of every probe of a method, in mm over the ground of its stand.
+
+    ours, theirs : Datasets with probe_flow. A probe stands for all trees of its species in its
+    stand: its flow per sapwood area of its tree, times their sapwood per ground area.
+    """
+    ends = ours["time"].values.astype("datetime64[s]")
+    step_s = int(ours.attrs["interval_s"])
+    months = site.day_of(ends).astype("datetime64[M]")
+    names = {str(name) for key, cube in corrected.cubes.items() if key[0] == method
+             for name in cube["probe"].values}  # fmt: skip
+    first, second = ours["probe_flow"].values, theirs["probe_flow"].values
+    both = np.isfinite(first) & np.isfinite(second)
+    ground = _ground_per_flow(site, ours)
+    for row, probe in enumerate(ours["probe"].values.astype(str)):
+        if probe not in names or np.isnan(ground[row]):
+            continue
+        for month in np.unique(months[both[row]]):
+            here = both[row] & (months == month)
+            recipe, beside = (
+                float(own[row, here].sum() * step_s * ground[row]) for own in (first, second)
+            )
+            yield {
+                "probe": probe,
+                "start": str(month.astype("datetime64[D]")),
+                "end": str((month + 1).astype("datetime64[D]")),
+                "compared_h": int(here.sum()) * step_s / SECONDS_PER_HOUR,
+                "recipe_mm": recipe,
+                "beside_mm": beside,
+                "difference_mm": beside - recipe,
+            }
+
+
+def _ground_per_flow(site, probes):
+    """(probe) sapwood per ground of the species over the sapwood area of the tree [m-2]."""
+    trees = [str(name) for name in probes["tree"].values]
+    area = facts.tree_facts(site, trees)["sapwood_area"].values
+    ground = facts.stand_facts(site, probes["time"].values[:1])["sapwood_per_ground"]
+    of_stratum = dict(zip(ground["stand_species"].values.astype(str), ground.values, strict=True))
+    labels = zip(probes["stand"].values, probes["species"].values, strict=True)
+    own = np.array([of_stratum.get(f"{stand}/{species}", np.nan) for stand, species in labels])
+    return own / area
+
+
+def _table_of(recipe, chain, stage):
+    return next(s.stage.table for s in recipe.chains[chain] if s.stage.name == stage)
+
+
+def _admissible(rows):
+    """Probe -> whether the method may be used in all its installations and at all its points."""
+    if rows is None or ADMISSIBLE not in rows:
+        return {}
+    return rows.groupby("probe")[ADMISSIBLE].all().to_dict()
+
+
+def _own_admissible(recipe, corrected):
+    """(chain, stage) -> `_admissible` of the recipe's own method."""
+    return {
+        (chain, step.stage.name): _admissible(corrected.evidence.get(step.stage.table))
+        for chain, steps in recipe.chains.items()
+        for step in steps
+        if step.stage.table
+    }
+
+
+def with_spread(rows, own):
+    """The rows with `spread_mm`: highest less lowest difference among the admissible methods.
+
+    The recipe's own, at a difference of 0, counts where it is admissible. NaN without any.
+    """
+    keys = ["chain", "stage", "probe", "start"]
+    spread = {}
+    for key, group in rows.groupby(keys, sort=False):
+        chain, stage, probe, _ = key
+        differences = list(group["difference_mm"][group[ADMISSIBLE] == 1])
+        if own.get((chain, stage), {}).get(probe, True):
+            differences.append(0.0)
+        spread[key] = max(differences) - min(differences) if differences else np.nan
+    found = [spread[key] for key in rows[keys].itertuples(index=False, name=None)]
+    return rows.assign(spread_mm=np.array(found, dtype=float))
