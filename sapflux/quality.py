@@ -50,7 +50,7 @@ ROWS = [
     Flag("no_stem_temperature", 22, True, "no stem temperature to convert the voltage with"),
     Flag("no_calibration", 23, True, "the species has no calibration of its own"),
     Flag("incomplete_cycle", 24, True, "a heating cycle without both its readings"),
-    Flag("no_gradient", 25, True, "no reading of the unheated pair to subtract"),
+    Flag("no_gradient", 25, True, "no reading of the natural gradient near enough to subtract"),
     Flag("steep_gradient", 26, False, "natural temperature gradient beyond the recipe's limit"),
     Flag("lower_bound", 27, True, "upstream rise lost in noise: faster than the ratio can tell"),
 ]  # fmt: skip

@@ -174,6 +174,7 @@ ROWS = [
     Variable("probe_stratum", ("probe",), "1", "stand and species of the tree that it sits in"),
     Variable("paired", PROBE, "1", "1 while an unheated pair serves the probe, else 0"),
     Variable("power_off", PROBE, "1", "1 while the heater is off on purpose, else 0"),
+    Variable("heater_state_given", PROBE, "1", "1 while a channel gives heater_state, else 0"),
     Variable("heating_on", ("probe",), "s", "time heated in a heating cycle, NaN without one"),
     Variable("heating_off", ("probe",), "s", "time not heated in a heating cycle"),
     Variable("radial_from", ("probe", "point"), "m", "depth below cambium where the point begins"),

@@ -4,7 +4,7 @@ from math import isnan, nan
 from pathlib import Path
 
 from sapflux.cli import DONE
-from sapflux.cli.text import columns, count, note, print_json
+from sapflux.cli.text import columns, count, note, print_json, unverified_values
 from sapflux.study.rehearsal import rehearse as rehearsed
 from sapflux.study.rehearsal_files import as_data, spread, write_reports
 
@@ -43,6 +43,7 @@ def rehearse(options):
             print(f"  {name}s: {own['number']}, mean bias {own['mean_bias']:+.1%}{about}")
     for text in found.left_out:
         print(note(text))
+    print(note(unverified_values(found.unverified)))
     print("\n  The forest is invented, with the site's stems, probes and tables: it shows what the")
     print("  design and the pipeline can deliver, not what the site transpires.")
     print(f"  Written: {', '.join(map(str, paths))}")

@@ -4,7 +4,16 @@ import sys
 from pathlib import Path
 
 from sapflux.cli import DONE, FAILED, SOME_FAILED, USAGE
-from sapflux.cli.text import columns, count, millimetres, note, print_json, share
+from sapflux.cli.text import (
+    columns,
+    count,
+    millimetres,
+    note,
+    print_json,
+    share,
+    signed,
+    unverified_values,
+)
 from sapflux.errors import UserError
 from sapflux.pipeline.batch import dry_run, run_sites
 
@@ -97,14 +106,16 @@ def _print(outcome, several, options):
     print()
     if found["season"]:
         _print_season(found["season"])
+    if found["beside"]:
+        _print_beside(found["beside"])
     for text in [*found["refused"], *found["notes"]]:
         print(note(text))
-    if found["unverified"]:
-        values = "; ".join(found["unverified"])
-        print(note(f"values known from memory only, not verified against print: {values}"))
     print(f"\n  Written to {found['folder']} ({found['seconds']:.1f} s), run {found['identity']}:")
     for line in columns([[name, what] for name, what in found["written"]], ["", ""])[1:]:
         print(f"    {line}")
+    if found["unverified"]:
+        print()
+        print(note(unverified_values(found["unverified"])))
     if not several:
         print()
         for line in CAUTIONS:
@@ -129,6 +140,26 @@ def _print_season(season):
     ]
     header = ["stand", "species", "mm", "days", "refused", "measured", "filled", ""]
     for line in columns(rows, header, right=header[2:7]):
+        print(f"  {line}")
+    print()
+
+
+def _print_beside(rows):
+    """Other methods of a stage: what each made of the season of every stand it touches."""
+    print("  The same days by other methods, mm (methods_beside.csv has months and species)")
+    table = [
+        [
+            row["stage"],
+            row["method"],
+            row["stand"],
+            millimetres(row["recipe_mm"]),
+            millimetres(row["beside_mm"]),
+            signed(row["difference_mm"]) if row["days"] else "no day on which both have a total",
+        ]
+        for row in rows
+    ]
+    header = ["stage", "method", "stand", "recipe", "with it", "difference"]
+    for line in columns(table, header, right=header[3:]):
         print(f"  {line}")
     print()
 

@@ -36,6 +36,16 @@ def millimetres(value):
     return "-" if value is None or math.isnan(value) else f"{value:.1f}"
 
 
+def signed(value):
+    """A difference in millimetres with its sign; none at 0.
+
+    >>> signed(1.26), signed(-0.01)
+    ('+1.3', '0.0')
+    """
+    text = f"{value:+.1f}"
+    return text[1:] if float(text) == 0 else text
+
+
 def count(number, word):
     """A number and its word.
 
@@ -52,6 +62,11 @@ def note(text):
     '  note: the file is empty'
     """
     return textwrap.fill(text, 100, initial_indent="  note: ", subsequent_indent="        ")
+
+
+def unverified_values(values):
+    """A sentence on the published values that a recipe rests on and nobody has looked up."""
+    return f"values known from memory only, not verified against print: {'; '.join(values)}"
 
 
 def print_json(value):

@@ -5,6 +5,7 @@ from typing import Literal
 import numpy as np
 import pandas as pd
 import xarray as xr
+from scipy.stats import t as student
 
 from sapflux.correction.control_pairs import independent, pairs_of
 from sapflux.correction.night_table import laid_on
@@ -27,6 +28,8 @@ CONTROLS = {
     "pairs": np.int64, "rate_per_year": np.float64, "rate_error_per_year": np.float64,
     "applied": bool, "verdict": object,
 }  # fmt: skip
+# Days beyond the age of the oldest probe with a control that its rate still holds. Own judgement.
+BEYOND_D = 30.0
 NO_CONTROLS = "no re-installed controls: a fall of sensitivity cannot be told from drought"
 
 
@@ -39,6 +42,7 @@ def reference_days(
     probe_stratum=None,
     vapour_pressure_deficit=None,
     shortwave_radiation=None,
+    heating_on=None,
     /,
     *,
     method,
@@ -49,9 +53,10 @@ def reference_days(
 ):
     """One row a probe, point, installation and solar day of the block: its mean reference index.
 
-    start : UTC of the true solar midnight before; group : tree or stratum of the probe; age_d :
-    mean age of the records [d]; index : mean flow index of the reference records; records : their
-    number. Days with fewer than `fewest_records`, or without a positive index, have no row.
+    start : UTC of the true solar midnight before; group : tree or stratum of the probe, those
+    heated in cycles (`heating_on` set) apart; age_d : mean age of the records [d]; index : mean
+    flow index of the reference records; records : their number. Days with fewer than
+    `fewest_records`, or without a positive index, have no row.
     """
     index = flow_index.transpose(*RECORD)
     groups = probe_tree if method == "same_tree" else probe_stratum
@@ -71,6 +76,9 @@ def reference_days(
     day = np.searchsorted(number[first], number)
     numbers = laid_on(index, installation)
     age = laid_on(index, installed_age) / DAY_S
+    cycled = np.zeros(age.shape, bool)
+    if heating_on is not None:
+        cycled = np.isfinite(laid_on(index, heating_on))
     parts = []
     for place, probe in enumerate(index["probe"].values):
         for point, label in enumerate(index["point"].values):
@@ -82,10 +90,12 @@ def reference_days(
                 mean = np.bincount(day[used], own[used], len(first)) / size
                 ages = np.bincount(day[used], age[place][used], len(first)) / size
                 met = np.flatnonzero((count >= fewest_records) & (mean > 0.0))
+                # The index of a heating cycle is another than that of heat that is never cut.
+                heated = " in cycles" if (cycled[place] & (numbers[place] == current)).any() else ""
                 columns = {
                     "probe": probe, "point": label, "installation": current, "start": start[met],
-                    "group": str(groups.values[place]), "age_d": ages[met], "index": mean[met],
-                    "records": count[met],
+                    "group": f"{groups.values[place]}{heated}", "age_d": ages[met],
+                    "index": mean[met], "records": count[met],
                 }  # fmt: skip
                 parts.append(pd.DataFrame(columns).astype(DAYS))
     parts = [part for part in parts if len(part)]
@@ -118,15 +128,18 @@ def without_controls(
     return pd.DataFrame(rows, columns=list(CONTROLS)).astype(CONTROLS)
 
 
-def fit_rate(rows, /, *, least_age_difference_d, fewest_common_days, fewest_controls, least_ratio):
+def fit_rate(
+    rows, /, *, least_age_difference_d, fewest_common_days, fewest_controls, least_confidence
+):
     """The table of installations with their controls, and the rate of ageing that these give."""
     if not len(rows):
         return _empty(CONTROLS)
     pairs = independent(pairs_of(rows, least_age_difference_d, fewest_common_days))
     older = {pair.older: pair for pair in pairs}
     rate, error = _rate(pairs)
-    applied = len(pairs) >= fewest_controls and rate > least_ratio * error
-    verdict = _verdict(pairs, rate, error, applied, fewest_controls, least_ratio)
+    sure = len(pairs) > 1 and rate > student.ppf((1 + least_confidence) / 2, len(pairs) - 1) * error
+    applied = len(pairs) >= fewest_controls and sure
+    verdict = _verdict(pairs, rate, error, applied, fewest_controls, least_confidence)
     table = []
     for key, own in rows.groupby(["probe", "point", "installation"], sort=True):
         pair = older.get(key)
@@ -163,7 +176,7 @@ def _rate(pairs):
     return rate, np.sqrt(scatter / (years**2).sum())
 
 
-def _verdict(pairs, rate=None, error=None, applied=False, fewest_controls=0, least_ratio=0.0):
+def _verdict(pairs, rate=None, error=None, applied=False, fewest_controls=0, confidence=0.0):
     if not pairs:
         return f"{NO_CONTROLS}; not corrected"
     number = f"{len(pairs)} control{'s' * (len(pairs) > 1)}"
@@ -171,7 +184,7 @@ def _verdict(pairs, rate=None, error=None, applied=False, fewest_controls=0, lea
         return f"{number}, {fewest_controls} needed: not corrected"
     found = f"{rate:.3f} +- {error:.3f} per year from {number}"
     if not applied:
-        return f"{found}, less than {least_ratio:g} times its error: not corrected"
+        return f"{found}, not beyond its error at a confidence of {confidence:.0%}: not corrected"
     return f"{found}: corrected"
 
 
@@ -196,7 +209,7 @@ def _empty(types):
         "least_age_difference_d": (1.0, 3650.0),
         "fewest_common_days": (1, 366),
         "fewest_controls": (2, 100),
-        "least_ratio": (0.0, 10.0),
+        "least_confidence": (0.5, 0.999),
     },
 )
 def ageing(
@@ -213,19 +226,20 @@ def ageing(
     least_age_difference_d=90.0,
     fewest_common_days=10,
     fewest_controls=3,
-    least_ratio=2.0,
+    least_confidence=0.95,
 ):
     """Flow index freed of the sensitivity that probes lose with age, where controls show how much.
 
     Wood reacts to a needle, and the same flow then cools it less. In one record that looks like
     drought; only a probe newly installed beside the old one tells them apart. Each older
-    installation is compared with one at least `least_age_difference_d` younger, on the days with
-    reference weather that both have. The logarithm of the ratio of their indices is the rate of
-    ageing times the difference in age, but for the places of the needles, whose effects are taken
-    as random with mean zero. An installation counts in one pair only, so that pairs are
-    independent; those of the largest difference in age are taken first. The rate is that of a
-    least-squares line through the origin, its error from the scatter among pairs. One rate holds
-    for all probes: index * exp(rate * age).
+    installation is compared with one of the same kind of heating, at least
+    `least_age_difference_d` younger, on the days with reference weather that both have. The
+    logarithm of the ratio of their indices is the rate of ageing times the difference in age, but
+    for the places of the needles, whose effects are taken as random with mean zero. An installation
+    counts in one pair only, so that pairs are independent; those of the largest difference in age
+    are taken first. The rate is that of a least-squares line through the origin, its error from
+    the scatter among pairs. One rate holds for all probes: index * exp(rate * age), with no age
+    more than 30 days above that of the oldest probe that had a control.
 
     Without enough controls, or where the rate is not beyond its error, nothing is changed.
 
@@ -260,8 +274,9 @@ def ageing(
         Reference days that a pair needs in common. Own judgement.
     fewest_controls : int [1]
         Independent pairs that a rate needs. Own judgement.
-    least_ratio : float [1]
-        The rate must be above so many of its standard errors. Own judgement.
+    least_confidence : float [1]
+        Confidence, by Student's t of the pairs, that the rate is not zero. A rate that just passes
+        is likely too large: with few pairs it is by chance that it passed. Common practice.
 
     Returns
     -------
@@ -274,5 +289,7 @@ def ageing(
     if not len(ageing_controls) or not ageing_controls["applied"].to_numpy(dtype=bool)[0]:
         return {"flow_index": flow_index.copy()}
     rate = float(ageing_controls["rate_per_year"].to_numpy()[0])
-    gain = xr.apply_ufunc(np.exp, rate * np.maximum(installed_age, 0.0) / YEAR_S)
+    compared = ageing_controls[ageing_controls["control_probe"] != ""]
+    oldest = (float(compared["oldest_age_d"].max()) + BEYOND_D) * DAY_S
+    gain = xr.apply_ufunc(np.exp, rate * installed_age.clip(0.0, oldest) / YEAR_S)
     return {"flow_index": (flow_index * gain).transpose(*flow_index.dims)}

@@ -29,6 +29,7 @@ def heating_cycle(
     heating_on=None,
     heating_off=None,
     heater_state=None,
+    heater_state_given=None,
     /,
     *,
     least_heater_share=0.99,
@@ -41,7 +42,7 @@ def heating_cycle(
     at a fixed time after switching, since within a cycle the needle comes to rest neither warm
     nor cold; the coefficients of continuous heating do not hold for the result.
 
-    Records with the heater on are told by its logged state; where that is not logged, cycles are
+    Records with the heater on are told by its logged state; where no channel gives that, cycles are
     counted from the full hour of UTC and begin with heating. A cycle is the heating and the pause
     after it. Probes heated without a break pass unchanged.
 
@@ -56,6 +57,9 @@ def heating_cycle(
         heated without a break.
     heater_state : (probe, time) [1]
         Share of the interval with the heater on, where logged.
+    heater_state_given : (probe, time) [1]
+        1 while a channel gives that share: where it is missing then, nothing tells when the heater
+        was on, for it need not keep to the clock.
     least_heater_share : float [1]
         From this share of the interval the heater counts as on, and as off up to 1 less it. Own
         judgement.
@@ -79,6 +83,9 @@ def heating_cycle(
     on_s, off_s = laid_on(heated, heating_on), laid_on(heated, heating_off)
     numbers = laid_on(heated, installation)
     state = np.full(on_s.shape, np.nan) if heater_state is None else laid_on(heated, heater_state)
+    given = np.zeros(on_s.shape, dtype=bool)
+    if heater_state_given is not None:
+        given = laid_on(heated, heater_state_given) > 0
     made, wanting = heated.values.copy(), np.zeros(heated.shape, dtype=bool)
     for row in np.flatnonzero(np.isfinite(on_s).any(axis=-1)):
         own = np.isfinite(on_s[row])
@@ -86,7 +93,7 @@ def heating_cycle(
         added = np.full(values.shape, np.nan)
         for cycle in _cycles(on_s[row, own], off_s[row, own]):
             here = (on_s[row] == cycle[0]) & (off_s[row] == cycle[1])
-            switched = _switched(stamps, state[row], *cycle, least_heater_share)
+            switched = _switched(stamps, state[row], given[row], *cycle, least_heater_share)
             _add_cycles(added, values, stamps, switched, np.where(here, numbers[row], -1), *cycle)
         # A record that is missing stays so, though its cycle has a value.
         made[row] = np.where(own & np.isfinite(values), added, values)
@@ -104,8 +111,11 @@ def _cycles(on_s, off_s):
             yield on, off
 
 
-def _switched(stamps, state, on_s, off_s, least_share):
-    """(time) 1 where the heater was on, -1 where it was off, 0 where neither or not known."""
+def _switched(stamps, state, given, on_s, off_s, least_share):
+    """(time) 1 where the heater was on, -1 where it was off, 0 where neither or not known.
+
+    given : (time) bool, whether a channel gives the state, so that the clock does not.
+    """
     interval = _interval(stamps)
     told = np.select([state >= least_share, state <= 1.0 - least_share], [1, -1], 0)
     cycle = on_s + off_s
@@ -113,7 +123,7 @@ def _switched(stamps, state, on_s, off_s, least_share):
         return told
     begin = (stamps - interval) % cycle
     counted = np.select([begin + interval <= on_s, begin >= on_s], [1, -1], 0)
-    return np.where(np.isnan(state), counted, told)
+    return np.where(np.isnan(state) & ~given, counted, told)
 
 
 def _add_cycles(added, values, stamps, switched, numbers, on_s, off_s):

@@ -110,8 +110,8 @@ def zero_flow_difference(
         way on all of them, so wet and dry soil must not share a regime.
     reference_dates : windows that lie wholly within dates of references.csv at which no sap flows
         (kind dormant or cut). The dates must hold a night after midnight.
-    diameter_plateau : windows in which the stem has stopped swelling and is at its highest since
-        midnight, so that refilling has ended.
+    diameter_plateau : windows in which the stem has stopped swelling and is at its highest between
+        midnight and sunrise, so that refilling has ended.
 
     Whatever the method, a night never counts if somebody was at the logger, after frost, if the
     heater power changed, or if the connector got wet: rain, with more noise than the probe shows
@@ -166,8 +166,8 @@ def zero_flow_difference(
         Of "diameter_plateau", fastest swelling within the window: above growth at night, below
         refilling. Own judgement.
     farthest_below_um : float [um]
-        Of "diameter_plateau", farthest mean distance from the highest diameter since midnight.
-        Own judgement.
+        Of "diameter_plateau", farthest mean distance from the highest diameter between midnight
+        and sunrise. Own judgement.
     humidity_bias : float [1]
         Bias of the relative humidity for accepted_if_drier and accepted_if_wetter. Common
         practice: the accuracy that makers state.

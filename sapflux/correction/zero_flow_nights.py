@@ -255,13 +255,15 @@ def _wholly(record, nights, size, at_rest):
 def _diameter(record, nights, size, least_records_share, diameter):
     """(probe, 1, night, window) how fast the stem swells and how far it is below its highest.
 
-    The highest is that since the night began, at true solar midnight.
+    The highest is that of the night, from true solar midnight to sunrise: a stem that rests early
+    and swells later has not refilled.
     """
     if diameter is None:
         values = in_nights(np.full((1, record.sizes["time"]), np.nan), nights, np.nan)
     else:
         values = _on_nights(record, nights, diameter) * UM_PER_M
-    highest = np.maximum.accumulate(np.where(np.isnan(values), -np.inf, values), axis=-1)
+    highest = np.where(np.isnan(values), -np.inf, values)
+    highest = highest.max(axis=-1, keepdims=True, initial=-np.inf)
     slope = window_slopes(values, nights, size, least_records_share)
     below = window_means(highest - values, nights, size, least_records_share).mean
     return {"swelling_um_h": slope[:, None], "below_highest_um": below[:, None]}

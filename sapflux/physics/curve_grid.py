@@ -24,10 +24,10 @@ def between(place, width, diffusivity, table_of):
     total = 0.0
     for wide, share_of_width in _neighbours(width / WIDTH_STEP):
         for fast, share_of_diffusivity in _neighbours(np.log(diffusivity) / DIFFUSIVITY_STEP):
-            nodes, row = np.unique(wide + 1j * fast, return_inverse=True)  # pairs
+            nodes, row = _nodes(wide, fast)
             tables = [
-                table_of(float(node.real * WIDTH_STEP), float(np.exp(node.imag * DIFFUSIVITY_STEP)))
-                for node in nodes
+                table_of(float(w * WIDTH_STEP), float(np.exp(k * DIFFUSIVITY_STEP)))
+                for w, k in nodes
             ]
             values = np.array([values for values, _ in tables])
             (below, not_above), (above, part) = _neighbours(
@@ -39,6 +39,20 @@ def between(place, width, diffusivity, table_of):
             limits = np.array([limits for _, limits in tables])[row].T
             total = total + share_of_width * share_of_diffusivity * np.vstack([read, limits])
     return total
+
+
+def _nodes(wide, fast):
+    """The different pairs (width, diffusivity) of whole numbers, and which is each record's.
+
+    Counted, not sorted: the grid is small and the records are many.
+    """
+    first, low = wide.min(), fast.min()
+    columns = int(fast.max() - low) + 1
+    code = ((wide - first) * columns + (fast - low)).astype(np.int64)
+    there = np.bincount(code) > 0
+    found = np.flatnonzero(there)
+    pairs = zip(found // columns + first, found % columns + low, strict=True)
+    return list(pairs), (np.cumsum(there) - 1)[code]
 
 
 def _neighbours(place):

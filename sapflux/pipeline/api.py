@@ -16,6 +16,7 @@ from sapflux.pipeline.outputs import run_identity, write_run
 from sapflux.pipeline.plan import check_plan
 from sapflux.pipeline.recipe import load_recipe
 from sapflux.pipeline.staging import publish
+from sapflux.scaling.whole_stands import ALL
 from sapflux.site.load import load_site
 
 # Columns of text that may be blank throughout: blank is "", never a missing number.
@@ -127,6 +128,7 @@ def summary(run):
         "files": len(ledger),
         "ledger": {name: int(number) for name, number in classes.items()},
         "season": run.table("season").to_dict("records") if scaled else [],
+        "beside": methods_beside(run),
         "refused": [*refused_days(run.table("daily"))] if scaled else [],
         "notes": run.record["notes"],
         "unverified": run.record["unverified"],
@@ -137,6 +139,15 @@ def summary(run):
             for path in sorted(run.folder.iterdir())
         ],
     }
+
+
+def methods_beside(run):
+    """What other methods of a stage made of each stand's season: rows, none without any."""
+    if not (run.folder / "methods_beside.csv").is_file():
+        return []
+    rows = run.table("methods_beside")
+    season = rows[(rows["period"] == "season") & (rows["species"] == ALL)]
+    return season.drop(columns=["period", "species"]).to_dict("records")
 
 
 def refused_days(daily):

@@ -24,6 +24,7 @@ from sapflux.pipeline.execute import BLOCK_DAYS, Chain, fitted_tables, run_block
 from sapflux.pipeline.installation_lives import FlagCounts, installation_table, window_drifts
 from sapflux.pipeline.join import Joined, common_grid
 from sapflux.pipeline.notes import notes_of, notes_of_lives, notes_of_methods
+from sapflux.pipeline.notes_corrections import notes_of_corrections
 from sapflux.pipeline.plan import methods_beside
 from sapflux.pipeline.scale import ground_of, labelled, scale
 from sapflux.pipeline.side_by_side import Compared, Corrected, run_beside
@@ -59,7 +60,9 @@ def compute(site, recipe, *, native=False, block_days=BLOCK_DAYS, logs=None, kno
     logs, notes = (logs, []) if logs is not None else _read_logs(site)
     known = known or (lambda chain, cube: {})
     stopwatch.lap("read")
-    found = Computed(logs, notes=notes + notes_of(site, recipe))
+    found = Computed(
+        logs, notes=[*notes, *notes_of(site, recipe), *notes_of_corrections(site, recipe)]
+    )
     cubes = measured_cubes(site, logs)
     weather = weather_series(site, logs)
     stopwatch.lap("assemble")
@@ -109,7 +112,7 @@ def compute(site, recipe, *, native=False, block_days=BLOCK_DAYS, logs=None, kno
         )
         found.beside = run_beside(site, recipe, corrected, chosen, block_days)
         found.tables |= found.beside.tables()
-    found.notes += notes_of_methods(found.beside, left_out)
+    found.notes += notes_of_methods(left_out)
     stopwatch.lap("beside")
     found.seconds = stopwatch.seconds
     return found

@@ -4,6 +4,7 @@ import numpy as np
 import pandas as pd
 
 from sapflux import quality
+from sapflux.ingest.cube import METHODS
 from sapflux.site.installations import episodes, installation_numbers
 
 # Records of so large a log ratio tell how it drifts within the reading window, and so many of them
@@ -89,6 +90,7 @@ def window_drifts(site, cubes):
 def installation_table(site, counts, evidence, drifts=None):
     """One row an installation, in the order of `probes.csv`.
 
+    Records of unheated pairs are not counted (NaN): they have no chain of their own.
     evidence : name -> fitted table of a summarising stage, for the baseline figures; drifts : as
     `window_drifts` gives them.
     """
@@ -106,7 +108,7 @@ def installation_table(site, counts, evidence, drifts=None):
                 "method": row.method,
                 "installed": row.installed.isoformat(" "),
                 "removed": row.removed.isoformat(" ") if row.removed else "",
-                "records": records,
+                "records": np.nan if row.method not in METHODS else records,
                 "usable_fraction": counts.good.get(key, 0) / records if records else np.nan,
                 **_baseline(evidence.get("zero_flow_nights"), key, "zero_flow", "difference_K"),
                 **_zero_flow(evidence.get("zero_flow_nights"), key),
@@ -116,9 +118,16 @@ def installation_table(site, counts, evidence, drifts=None):
                 "window_drift": (drifts or {}).get(key, np.nan),
                 **{f"{name}_fraction": value
                    for name, value in zip(quality.NATIVE, share, strict=True)},
-                "ended": "removed" if row.removed else ("no record" if not records else ""),
+                "ended": _ended(row, records),
             })  # fmt: skip
     return pd.DataFrame(rows)
+
+
+def _ended(row, records):
+    """Why an installation ended. Records of unheated pairs are not counted: they have no chain."""
+    if row.removed:
+        return "removed"
+    return "no record" if row.method in METHODS and not records else ""
 
 
 def _baseline(nights, key, name, column):

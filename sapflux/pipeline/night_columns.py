@@ -40,11 +40,17 @@ def night_tables(evidence, beside=()):
     """The night tables of a run, as they are written.
 
     evidence : table of a summarising stage -> fitted DataFrame; beside : (method, table,
-    DataFrame) of each method run beside the recipe's own.
+    DataFrame) of each method run beside the recipe's own. Tables without a row are left out.
     """
-    tables = {name: _written(evidence[name], name) for name in NIGHTS if name in evidence}
+    tables = {
+        name: _written(evidence[name], name)
+        for name in NIGHTS
+        if name in evidence and len(evidence[name])
+    }
     parts = {}
     for method, name, rows in beside:
+        if not len(rows):
+            continue
         own = _written(rows, name)
         own.insert(0, "method", method)
         parts.setdefault(f"{name}_beside", []).append(own)

@@ -2,7 +2,6 @@
 
 from sapflux import quality
 from sapflux.ingest.cube import METHODS
-from sapflux.scaling.whole_stands import ALL
 from sapflux.site.installations import heating
 from sapflux.site.inventory import bark_known, composition, sapwood_depth, tree_row
 
@@ -24,7 +23,6 @@ NO_BARK = "no bark known for {}: its radius over bark is used, so its sapwood is
 BEYOND_DISC = (
     "{} stems of {} in {} have more sapwood by the allometry than they have wood: the sum keeps it"
 )
-ASSUMED = "wound width of {} is assumed, not measured: 0.1 mm changes its flux by 2 to 4 %"
 OUTER = (
     "the outermost flux density is carried inwards to the heartwood, which overstates trees whose "
     "flux falls with depth"
@@ -46,7 +44,6 @@ def notes_of(site, recipe):
         *_calibration(site, recipe),
         *_bark(site),
         *_sapwood(site),
-        *_wounds(site),
         *_radial(recipe),
         *_strata(site, recipe),
         *_needles(site, recipe),
@@ -86,16 +83,6 @@ def _sapwood(site):
     for (stand, species), part in composition(site).items():
         if part.beyond_disc:
             yield BEYOND_DISC.format(part.beyond_disc, species, stand)
-
-
-def _wounds(site):
-    names = {
-        row.probe or row.tree or row.species
-        for row in site.table("wounds")
-        if "assumed" in row.source.lower()
-    }
-    if names:
-        yield ASSUMED.format(_listed(names))
 
 
 def _radial(recipe):
@@ -179,26 +166,14 @@ def _ageing(controls):
             yield f"{_listed(set(old['probe']))}: installed for more than {OLD_D} days; {verdict}"
 
 
-def notes_of_methods(compared, left_out):
-    """Notes on the methods run beside the recipe's own, by stage: what each made of the season.
+def notes_of_methods(left_out):
+    """A note on the methods that a recipe would run beside its own and the site cannot serve.
 
-    compared : `Compared` or None; left_out : (chain, stage, method) that the site cannot serve.
+    left_out : (chain, stage, method) of each.
     """
-    stages = {}
-    if compared is not None:
-        rows = compared.stands
-        season = rows[(rows["period"] == "season") & (rows["species"] == ALL)]
-        for (stage, stand), group in season.groupby(["stage", "stand"], sort=False):
-            told = [
-                f"{row.method} {row.difference_mm:+.1f} of {row.recipe_mm:.1f} mm"
-                for row in group.itertuples()
-            ]
-            stages.setdefault(stage, []).append(f"{stand} {', '.join(told)}")
-    for stage, told in stages.items():
-        yield f"other methods of {stage} on the same days: {'; '.join(told)} (methods_beside.csv)"
     if left_out:
         names = ", ".join(f"{stage} {method}" for _, stage, method in left_out)
-        yield f"methods the site has no data for, not run beside the others: {names}"
+        yield f"methods the site has no data for, not run beside the recipe's own: {names}"
 
 
 def _nights(nights, probes):

@@ -44,9 +44,9 @@ def plan_faults(site, recipe):
                 f"List their stages under [[{method}]].",
             )
             continue
-        yield from _chain_faults(recipe, method, _given(site, method), "flux_density")
+        yield from _chain_faults(recipe, method, given_names(site, method), "flux_density")
     if methods:
-        yield from _chain_faults(recipe, "scaling", _given(site, "scaling"), None)
+        yield from _chain_faults(recipe, "scaling", given_names(site, "scaling"), None)
     yield from _ring_porous_faults(site, recipe)
     yield from _wound_faults(site, recipe)
     yield from _heating_faults(site, recipe)
@@ -60,7 +60,7 @@ def methods_beside(site, recipe):
     """
     chosen, left_out = [], []
     for chain in (*methods_of(site), "scaling"):
-        available = set(_given(site, chain))
+        available = set(given_names(site, chain))
         for step in recipe.chains[chain]:
             own = step.settings.get("method")
             every = [method for method in _choices(step.stage) if method != own]
@@ -72,7 +72,7 @@ def methods_beside(site, recipe):
     return chosen, left_out
 
 
-def _given(site, chain):
+def given_names(site, chain):
     """Names that a chain finds before its first stage."""
     beside = given_facts(site) | weather_names(site) | SUN
     if chain == "scaling":

@@ -20,6 +20,7 @@ from sapflux.scaling.whole_stands import ALL
 from sapflux.site import facts
 
 SECONDS_PER_HOUR = 3600.0
+NEARLY_ALL_HOURS = 0.9  # share of the recipe's hours that makes a month comparable: own judgement
 ADMISSIBLE = "admissible"  # column of an evidence table: whether the method may be used there
 ONE_DAY = np.timedelta64(1, "D")
 STAND_COLUMNS = (
@@ -28,6 +29,7 @@ STAND_COLUMNS = (
 )  # fmt: skip
 PROBE_COLUMNS = (
     "chain", "stage", "method", "probe", "start", "end", "compared_h",
+    "compared_fraction",
     "recipe_mm", "beside_mm", "difference_mm", "admissible", "spread_mm",
 )  # fmt: skip
 
@@ -79,7 +81,8 @@ def run_beside(site, recipe, corrected, chosen, block_days):
         scaled = scale(site, other, joined, corrected.weather, block_days)
         if scaled.stand is not None:
             days = days_of(site, other, scaled.stand, corrected.weather)
-            stands += [key | row for row in _stand_rows(corrected.days, days)]
+            touched = _touched(site, corrected, chain)
+            stands += [key | row for row in _stand_rows(corrected.days, days, touched)]
         if chain != "scaling":
             table = _table_of(other, chain, stage)
             rows = tables.get(table)
@@ -128,19 +131,43 @@ def _with_probes(whole, part):
     return made
 
 
-def _stand_rows(ours, theirs):
-    """Rows by month and over the season, stratum by stratum and for each stand whole."""
+def _touched(site, corrected, chain):
+    """(stand, species) that have probes of the chain of their own; of scaling, that have any."""
+    labels = zip(
+        corrected.probes["probe"].values.astype(str),
+        corrected.probes["stand"].values.astype(str),
+        corrected.probes["species"].values.astype(str),
+        strict=True,
+    )
+    names = {row.probe for row in site.table("probes") if chain in ("scaling", row.method)}
+    return {(stand, species) for probe, stand, species in labels if probe in names}
+
+
+def _stand_rows(ours, theirs, touched):
+    """Rows by month and over the season, stratum by stratum and for each stand whole.
+
+    touched : (stand, species) that the method may change by itself. A stratum that it does not
+    change is left out, and a stand of which it touches none. Without a day on which both may be
+    totalled, the season's row has no millimetres.
+    """
     for stand in dict.fromkeys(ours.stands):
         strata = [n for n, own in enumerate(ours.stands) if own == stand]
-        groups = [(ours.species[n], [n]) for n in strata] + [(ALL, strata)]
+        groups = [
+            (ours.species[n], [n])
+            for n in strata
+            if (stand, ours.species[n]) in touched or _differ(ours, theirs, n)
+        ]
+        if groups:
+            groups.append((ALL, strata))
         for species, members in groups:
             both = ours.valid[members].all(axis=0) & theirs.valid[members].all(axis=0)
             for period, picked in _periods(ours):
                 used = picked[both[picked]]
-                if not len(used):
+                if not len(used) and period != "season":
                     continue
                 recipe, beside = (
-                    float(own.total[np.ix_(members, used)].sum()) for own in (ours, theirs)
+                    float(own.total[np.ix_(members, used)].sum()) if len(used) else np.nan
+                    for own in (ours, theirs)
                 )
                 yield {
                     "period": period,
@@ -153,6 +180,10 @@ def _stand_rows(ours, theirs):
                     "beside_mm": beside,
                     "difference_mm": beside - recipe,
                 }
+
+
+def _differ(ours, theirs, stratum):
+    return not np.array_equal(ours.total[stratum], theirs.total[stratum], equal_nan=True)
 
 
 def _periods(days):
@@ -183,6 +214,7 @@ def _probe_rows(site, ours, theirs, method, corrected):
             continue
         for month in np.unique(months[both[row]]):
             here = both[row] & (months == month)
+            of_recipe = np.isfinite(first[row]) & (months == month)
             recipe, beside = (
                 float(own[row, here].sum() * step_s * ground[row]) for own in (first, second)
             )
@@ -191,6 +223,7 @@ def _probe_rows(site, ours, theirs, method, corrected):
                 "start": str(month.astype("datetime64[D]")),
                 "end": str((month + 1).astype("datetime64[D]")),
                 "compared_h": int(here.sum()) * step_s / SECONDS_PER_HOUR,
+                "compared_fraction": here.sum() / of_recipe.sum(),
                 "recipe_mm": recipe,
                 "beside_mm": beside,
                 "difference_mm": beside - recipe,
@@ -232,13 +265,16 @@ def _own_admissible(recipe, corrected):
 def with_spread(rows, own):
     """The rows with `spread_mm`: highest less lowest difference among the admissible methods.
 
-    The recipe's own, at a difference of 0, counts where it is admissible. NaN without any.
+    A method counts where it covers nearly all of the hours that the recipe's own covers, since
+    differences over a few of them say nothing of the month. The recipe's own, at a difference of
+    0, counts where it is admissible. NaN without any.
     """
     keys = ["chain", "stage", "probe", "start"]
     spread = {}
     for key, group in rows.groupby(keys, sort=False):
         chain, stage, probe, _ = key
-        differences = list(group["difference_mm"][group[ADMISSIBLE] == 1])
+        counts = (group[ADMISSIBLE] == 1) & (group["compared_fraction"] >= NEARLY_ALL_HOURS)
+        differences = list(group["difference_mm"][counts])
         if own.get((chain, stage), {}).get(probe, True):
             differences.append(0.0)
         spread[key] = max(differences) - min(differences) if differences else np.nan

@@ -178,6 +178,7 @@ def _makers(site, records, point_count):
         "probe_tree": lambda: (("probe",), np.array(records.trees, dtype=str)),
         "probe_stratum": lambda: (("probe",), np.array(_strata(site, records), dtype=str)),
         "paired": lambda: spans.paired(site, records),
+        "heater_state_given": lambda: spans.heater_state_given(site, records),
         "power_off": lambda: spans.power_off(site, records),
         "visited": lambda: spans.visited(site, records),
         "at_rest": lambda: spans.at_rest(site, records),

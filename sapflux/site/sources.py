@@ -40,6 +40,7 @@ SOURCES = {
     "probe_tree": ((("probes", "tree"),),),
     "probe_stratum": ((("trees", "species"),),),
     "paired": ((("pairs", "heated"),),),
+    "heater_state_given": ((("channels", "quantity"),),),
     "power_off": ((("references", "kind"),),),
     "visited": ((("visits", "arrival"),),),
     "at_rest": ((("references", "kind"),),),

@@ -49,6 +49,26 @@ def visited(site, records):
     return _laid(inside)
 
 
+def heater_state_given(site, records):
+    """(dims, values): 1 while a channel gives the heater's state, of the probe or of its logger.
+
+    A record is where its middle is. What a logger gives counts while the probe's signal is on it.
+    """
+    inside = np.zeros((len(records.probes), len(records.middles)), dtype=bool)
+    channels = site.table("channels")
+    states = [row for row in channels if row.quantity == "heater_state"]
+    for place, probe in enumerate(records.probes):
+        signals = [row for row in channels if row.kind == "probe" and row.id == probe]
+        for state in states:
+            held = holding(site, state, records.middles)
+            if state.kind == "probe" and state.id == probe:
+                inside[place] |= held
+            for signal in signals if state.kind == "log" else ():
+                if signal.log == state.id:
+                    inside[place] |= held & holding(site, signal, records.middles)
+    return _laid(inside)
+
+
 def _references(site, records, kinds):
     """(row, [bool of each probe]) of `references.csv`: the probe named, its species, or all."""
     for row in site.table("references"):

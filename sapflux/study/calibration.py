@@ -8,6 +8,8 @@ from datetime import date
 from pathlib import Path
 from typing import Literal
 
+from scipy.stats import t as student
+
 from sapflux.errors import DataError, Fault
 from sapflux.physics.calibration import FEWEST_STEMS, PowerLaw, fit_power_law
 from sapflux.pipeline.tables import guarded
@@ -47,8 +49,8 @@ def calibrate(path, *, species="", name=""):
     species, name : of the register's row; name "": that of the file.
 
     DataError with every fault of the table: those of its cells by line, a stem named in some rows
-    only, several kinds of heating, fewer than 5 points, too narrow a range of the flow index, or
-    fluxes that no power law has as its mean.
+    only, several kinds of heating, fewer than 5 points, too narrow a range of the flow index,
+    fluxes that no power law has as its mean, or that do not rise with the index.
     """
     path = Path(path)
     table = read_table(path, Gravimetric)
@@ -62,6 +64,10 @@ def calibrate(path, *, species="", name=""):
     except ValueError as error:
         remedy = "The mean of flux_g_m2_s must be positive at every flow index: see its signs."
         raise DataError(Fault(str(path), str(error), remedy)) from None
+    if law.exponent <= 0.0:
+        fault = f"the flux does not rise with the flow index: exponent {law.exponent:.3g}"
+        remedy = "An exponent is above 0: see that both columns are of the same moments."
+        raise DataError(Fault(str(path), fault, remedy))
     stems = f" of {law.stems} stem{'s' * (law.stems > 1)}" if law.stems else ""
     source = f"gravimetric, {law.points} points{stems} ({path.name})"
     return Fitted(name or path.stem, species, table.rows[0].heating, source, table.rows, law)
@@ -134,7 +140,11 @@ def register_text(fitted):
 def covariance_in_words(law):
     """How the errors were found."""
     if law.by_stem:
-        return f"from the scatter among {law.stems} stems"
+        times = student.ppf(0.975, law.stems - 1)
+        return (
+            f"from leaving out each of the {law.stems} stems in turn; the 95 % interval is "
+            f"{times:.1f} of them to either side (Student's t)"
+        )
     if law.stems:
         return f"from the scatter of points: {law.stems} of {FEWEST_STEMS} stems needed for theirs"
     return "from the scatter of points, as if no stem differed from another"

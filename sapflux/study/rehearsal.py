@@ -42,6 +42,7 @@ class Rehearsal:
     left_out: tuple
     options: dict  # how the forward model made the truth
     faults: pd.DataFrame  # every fault injected: kind, log, name, begin, end, size, ...
+    unverified: tuple  # published values of the recipe known from memory only
 
 
 def rehearse(path, out, *, seed=1, years=None, days=None, recipe="stand_water_use",
@@ -87,6 +88,7 @@ def rehearse(path, out, *, seed=1, years=None, days=None, recipe="stand_water_us
         truth.left_out,
         truth.options | ({} if table is None else {"weather_table": table.name}),
         fault_frame(truth),
+        tuple(run.record["unverified"]),
     )
 
 

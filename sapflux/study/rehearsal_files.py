@@ -50,6 +50,7 @@ def as_data(found):
         "probes": spread(found.probes) | {"each": found.probes.to_dict("records")},
         "faults": found.faults["kind"].value_counts().sort_index().to_dict(),
         "left_out": list(found.left_out),
+        "unverified": list(found.unverified),
     })  # fmt: skip
 
 

@@ -50,7 +50,7 @@ def test_the_row_can_be_pasted_into_the_register(tmp_path, capsys):
     assert (row.lowest_index, row.highest_index) == (0.05, 1.0)
     assert 0 < row.ln_factor_error < 0.2 and 0 < row.exponent_error < 0.2
     assert "9 points of 3 stems" in row.source
-    assert "from the scatter among 3 stems" in out.out
+    assert "from leaving out each of the 3 stems in turn" in out.out
 
 
 def test_the_plot_is_the_same_file_for_the_same_table(tmp_path, capsys):
@@ -96,6 +96,10 @@ FAULTY = {
     "no positive mean": (
         HEAD + "0.1,-1,a\n0.2,-1,a\n0.3,0,a\n0.4,0,a\n0.5,1,a\n",
         ["the sum of the flux is not positive"],
+    ),
+    "a flux that falls with the index": (
+        HEAD + "0.1,65,a\n0.2,50,a\n0.3,36,a\n0.4,22,a\n0.5,10,a\n",
+        ["does not rise with the flow index: exponent -"],
     ),
     "an unknown column": ("flow_index,flux\n0.1,10\n", ["unknown column 'flux'", "flux_g_m2_s"]),
 }

@@ -86,6 +86,9 @@ def test_run_prints_totals_ledger_and_files(tmp_path, capsys):
     told = capsys.readouterr().out
     for word in [
         "Season totals",
+        "The same days by other methods",
+        "nightly_maximum",
+        "values known from memory only",
         "upper",
         "spruce",
         "kept",

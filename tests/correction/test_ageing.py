@@ -67,6 +67,18 @@ def test_without_effects_of_place_the_rate_comes_back_and_with_it_the_flow():
     np.testing.assert_allclose(found, true, rtol=1e-8)
 
 
+def test_no_age_far_beyond_that_of_the_compared_probes_is_corrected_for():
+    ages, trees = paired(3)  # the oldest of them is 770 d, 809.4 d at its last reference record
+    arrays, true = site([*ages, 1500.0], [*trees, "T9"], rate=0.2)
+    found, table = corrected(arrays)
+    assert table["applied"].all()
+    np.testing.assert_allclose(found[:6], true[:6], rtol=1e-8)
+    noon = np.flatnonzero(true[6] > 0)[0]
+    gain = found[6][noon] / arrays["flow_index"].values[6, 0, noon]
+    # by hand: (809.4 + 30) d / 365.25 d a year * 0.2 a year = 0.4596
+    assert np.log(gain) == pytest.approx(0.4596, abs=2e-4)
+
+
 def test_the_rate_is_within_its_error_whatever_the_places_of_the_needles():
     # 30 sites of 8 trees with effects of place of 5 %, so sqrt(2) * 5 % a pair over 2.1 years: 95 %
     # of Student's t with 7 degrees of freedom lie within 2.365 errors (statistical tables).
@@ -124,8 +136,12 @@ def test_probes_of_unlike_age_that_never_stood_together_are_no_controls():
     ("count", "changed", "words"),
     [
         (2, {}, "2 controls, 3 needed: not corrected"),
-        (3, {"rate": 0.0, "places": 0.1}, "less than 2 times its error: not corrected"),
-        (3, {"rate": -0.3}, "less than 2 times its error: not corrected"),
+        (
+            3,
+            {"rate": 0.0, "places": 0.1},
+            "not beyond its error at a confidence of 95%: not corrected",
+        ),
+        (3, {"rate": -0.3}, "not beyond its error at a confidence of 95%: not corrected"),
     ],
 )
 def test_a_rate_that_does_not_carry_is_not_applied(count, changed, words):
@@ -143,6 +159,17 @@ def test_a_control_is_in_the_same_tree_or_by_choice_in_the_same_stand_and_specie
     other = table_of(STAGE, alone, method="same_stand_and_species")
     assert other["pairs"].iloc[0] == 3
     assert other["rate_per_year"].iloc[0] == pytest.approx(0.2, rel=1e-9)
+
+
+def test_a_probe_heated_in_cycles_is_no_control_of_one_that_is_not():
+    # Each kind of heating has its own index; by cycles here 0.6 of the other, whatever the age.
+    arrays, _ = site(*paired(3))
+    index = arrays["flow_index"]
+    cycles = xr.DataArray([np.nan, 900.0] * 3, {"probe": index["probe"].values}, ("probe",))
+    mixed = dict(arrays, heating_on=cycles, flow_index=index.where(cycles.isnull(), 0.6 * index))
+    assert (table_of(STAGE, mixed)["verdict"] == NO_CONTROLS).all()
+    alike = dict(arrays, heating_on=cycles.fillna(900.0), flow_index=0.6 * index)
+    assert table_of(STAGE, alike)["rate_per_year"].iloc[0] == pytest.approx(0.2, rel=1e-9)
 
 
 def test_only_reference_weather_counts():

@@ -13,7 +13,7 @@ STAGE = REGISTRY["heat_dissipation", "heating_cycle"]
 PARTS = ((6.0, 120.0), (4.0, 900.0))  # K and s of the needle itself and of the wood around it
 
 
-def call(heated, on_min, off_min, state=None, installation=0):
+def call(heated, on_min, off_min, state=None, installation=0, state_given=None):
     arrays = {
         "heated_difference": heated,
         "installation": laid(installation, heated),
@@ -22,6 +22,8 @@ def call(heated, on_min, off_min, state=None, installation=0):
     }
     if state is not None:
         arrays["heater_state"] = laid(state, heated)
+    if state_given is not None:
+        arrays["heater_state_given"] = laid(state_given, heated)
     return bind(STAGE.function, arrays, STAGE.defaults())
 
 
@@ -193,3 +195,18 @@ def test_pauses_are_no_outages():
     silent[0, 0, 20:22] = 0.1
     outage = screen(silent, None, state, None, cycled, margin_min=0.0)["heater_failure"]
     assert outage[0, 0].values.nonzero()[0].tolist() == [20, 21]
+
+
+def test_where_a_logged_state_is_missing_the_clock_does_not_step_in():
+    # Cycles that begin 5 min past the hour: by the clock their readings would be 5 min off.
+    time, on = cycles(2, 5, 15, 15, shift_min=5)
+    state = on.astype(float)
+    state[300:400] = np.nan
+    heated = record(curve(on, 300.0), time)
+    made = call(heated, 15, 15, state=state, state_given=1)
+    found = made["heated_difference"].values[0, 0]
+    assert np.isnan(found[310:390]).all()
+    assert made["incomplete_cycle"].values[0, 0, 310:390].all()
+    np.testing.assert_allclose(found[410:-12], steady(900.0, 900.0), atol=1e-8)
+    # without a channel of the state the clock is all there is
+    assert np.isfinite(call(heated, 15, 15, state=state)["heated_difference"][0, 0, 310:390]).all()

@@ -32,7 +32,7 @@ def arrays_of(velocity_cm_h, down_K, up_K, time_s=None, width=WIDTH):
 
 
 def made_of(arrays, **changed):
-    made = bind(STAGE.function, arrays, STAGE.defaults() | changed)
+    made = bind(STAGE.function, arrays, STAGE.defaults() | {"wound_method": "strip"} | changed)
     return {name: array.values[0, 0] for name, array in made.items()}
 
 
@@ -78,6 +78,16 @@ def test_a_lower_bound_is_replaced_by_what_the_time_tells():
     assert made["lower_bound"].tolist() == [False, True, True]
     assert 75.0 < made["heat_pulse_velocity"][0] / CM_H < 80.0
     assert np.isnan(made["heat_pulse_velocity"][1:]).all()
+
+
+def test_the_time_by_the_strip_is_not_mixed_with_the_published_wound():
+    arrays = arrays_of([60.0, 60.0], 1.0, [0.1, 0.02], time_at(80.0))
+    made = made_of(arrays, wound_method="published")
+    assert made["heat_pulse_velocity"][0] / CM_H == pytest.approx(60.0, rel=1e-12)
+    assert made["lower_bound"].tolist() == [False, True]
+    # Sound wood has no theory of a wound to be mixed.
+    arrays = arrays_of([60.0], 1.0, 0.1, time_at(80.0, 0.0), width=0.0)
+    assert made_of(arrays, wound_method="published")["heat_pulse_velocity"][0] > 60.5 * CM_H
 
 
 def test_weights_by_hand_without_a_wound():
@@ -126,14 +136,30 @@ def test_facts_that_change_and_probes_that_differ_are_each_read_their_own_way():
             strip = Strip(np.nan_to_num(width[row][step]), K, pulse=pulse)
             times[row, :, step] = strip_maximum.time_of_maximum(45.0 * CM_H, strip)
     arrays["time_of_maximum_downstream"] = velocity.copy(data=times)
-    made = bind(STAGE.function, arrays, STAGE.defaults())["heat_pulse_velocity"].values / CM_H
+    settings_of = STAGE.defaults() | {"wound_method": "strip"}
+    made = bind(STAGE.function, arrays, settings_of)["heat_pulse_velocity"].values / CM_H
     assert ((made > 40.2) & (made < 45.0)).all()
     one = {
         name: array.isel(probe=[0], time=[1]) if "time" in array.dims else array.isel(probe=[0])
         for name, array in arrays.items()
     }
-    alone = bind(STAGE.function, one, STAGE.defaults())["heat_pulse_velocity"].values / CM_H
+    alone = bind(STAGE.function, one, settings_of)["heat_pulse_velocity"].values / CM_H
     assert alone[0, 0, 0] == made[0, 0, 1]
+
+
+def test_the_time_is_read_by_the_diffusivity_across_that_corrected_the_wound():
+    # Rises of a strip that conducts less across, at a speed of which the time tells most.
+    strip = Strip(WIDTH, K, tangential_to_axial=0.7, pulse=8.0)
+    time = strip_maximum.time_of_maximum(80.0 * CM_H, strip)
+    arrays = arrays_of([80.0], 1.0, 0.031, time)
+    made = made_of(arrays, tangential_to_axial_diffusivity=0.7)
+    # between the curves of the grid: 0.05 cm h-1 (see `strip_maximum`)
+    assert made["heat_pulse_velocity"][0] / CM_H == pytest.approx(80.0, abs=0.05)
+    assert made_of(arrays)["heat_pulse_velocity"][0] / CM_H < 78.0
+    assert STAGE.follows["tangential_to_axial_diffusivity"] == (
+        "wound",
+        "tangential_to_axial_diffusivity",
+    )
 
 
 def test_upstream_rise_stated():

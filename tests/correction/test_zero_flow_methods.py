@@ -189,24 +189,27 @@ def test_reference_dates_count_windows_wholly_at_rest():
 def test_diameter_plateau_waits_until_refilling_has_ended_by_hand():
     # Half-hourly diameters from 0:30. Night 0 swells by 20 um/h until 2:00 and is flat from then
     # on. Night 1 swells by 20 um/h to its end. Night 2 is flat, 40 um below where it began; the
-    # mean over the windows from 2:00 on is that far below. Night 3 has no diameter.
+    # mean over the windows from 2:00 on is that far below. Night 3 has no diameter. Night 4 rests
+    # until 3:00 and then swells by 30 um/h to its end: what rested early was not full.
     hours = np.arange(1, 49) / 2
     day = [
         20 * np.minimum(hours, 2.0),
         20 * hours,
         np.where(hours <= 0.5, 40.0, 0.0),
         np.full(48, NAN),
+        30 * np.maximum(hours - 3.0, 0.0),
     ]
-    arrays = nightly([10.0] * 4, 0.9, stem_diameter_change=np.concatenate(day) * UM)
+    arrays = nightly([10.0] * 5, 0.9, stem_diameter_change=np.concatenate(day) * UM)
     values = arrays["heated_difference"].values.copy()
     values[..., 0:4] = 9.5  # until 2:00 flow fills the stem
     arrays["heated_difference"] = arrays["heated_difference"].copy(data=values)
     table, _ = run(arrays, method="diameter_plateau")
-    assert table["accepted"].tolist() == [True, False, False, False]
+    assert table["accepted"].tolist() == [True, False, False, False, False]
     assert table["swelling_um_h"][0] <= 5
+    assert table["swelling_um_h"][4] == pytest.approx(0.0, abs=1e-9)
+    assert table["below_highest_um"][4] > 50  # sunrise is after 6:00
     assert table["difference_K"][0] == 10.0
     assert table["swelling_um_h"][1] == pytest.approx(20.0)
-    assert table["below_highest_um"][1] == pytest.approx(0.0, abs=1e-9)
     assert table["reason"][1] == "stem swelling by 20.0 um h-1, above 5"
     assert table["reason"][3] == "no stem diameter"
     # The first window of night 2 holds 40, 0, 0, 0 um: it shrinks, 30 um below its highest.

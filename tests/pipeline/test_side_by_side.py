@@ -1,6 +1,8 @@
 """Methods run beside the recipe's own: what a recipe of their own would give, and no more."""
 
 import tomllib
+from dataclasses import replace
+from datetime import timedelta
 from pathlib import Path
 
 import numpy as np
@@ -14,6 +16,7 @@ from sapflux.pipeline.recipe import find_recipe, load_recipe, read_recipe
 from sapflux.pipeline.side_by_side import with_spread
 from sapflux.site import inventory
 from sapflux.site.load import load_site
+from sapflux.site.tables import Reference
 
 SITE = Path(__file__).parents[2] / "configs" / "orvelin"
 PLAIN = load_recipe().alone()
@@ -111,14 +114,33 @@ def test_the_spread_is_that_of_the_admissible_methods_with_the_recipes_own():
             "start": "2031-06-01",
             "difference_mm": [-2.0, 3.0, 9.0],
             "admissible": [1, 1, 0],
+            "compared_fraction": [0.9, 1.0, 1.0],
         }
     )
     # By hand: 3 - (-2); the third may not be used. Without the first the recipe's own 0 counts.
     assert set(with_spread(rows, {})["spread_mm"]) == {5.0}
     assert set(with_spread(rows.iloc[1:], {})["spread_mm"]) == {3.0}
     assert set(with_spread(rows.iloc[1:], {("c", "s"): {"P": False}})["spread_mm"]) == {0.0}
+    # A method that covers less than nine tenths of the recipe's hours says nothing of the month.
+    few = rows.assign(compared_fraction=[1.0, 0.89, 1.0])
+    assert set(with_spread(few, {})["spread_mm"]) == {2.0}
     none = with_spread(rows.iloc[2:], {("c", "s"): {"P": False}})["spread_mm"]
     assert none.isna().all()
+
+
+def test_a_method_without_a_day_to_compare_says_so(site, own):
+    """A cut stem for a week gives the family of dates no day on which the stand is whole."""
+    start = site.standard(own.probes["time"].values[0].astype("datetime64[s]")).item()
+    reference = Reference(kind="cut", probe="P01", from_=start, to=start + timedelta(days=7))
+    dated = replace(site, tables={**site.tables, "references": (reference,)})
+    recipe = recipe_of("heat_dissipation", "zero_flow_difference", ["reference_dates"])
+    rows = compute(dated, recipe, logs=own.logs).tables["methods_beside"]
+    assert list(rows["period"].unique()) == ["season"]
+    whole = rows[rows["species"] == "all"].set_index("stand")
+    assert (whole["days"] == 0).all() and whole["beside_mm"].isna().all()
+    # Beech and oak of the lower stand: only oak carries heat dissipation probes there.
+    lower = set(rows[rows["stand"] == "lower"]["species"])
+    assert "oak" in lower and "beech" not in lower
 
 
 def test_all_leaves_out_what_the_site_cannot_serve_and_a_named_method_is_refused(site):

@@ -85,6 +85,7 @@ def test_every_fact_of_probes_is_laid_with_its_name_and_units(early):
     }  # fmt: skip
     assert set(early) == of_probes | {
         "installation", "installed_age", "paired", "power_off", "visited", "at_rest",
+        "heater_state_given",
     }  # fmt: skip
     for name, array in early.items():
         assert array.name == name

@@ -45,6 +45,19 @@ def test_a_pair_is_given_by_the_middle_of_a_record():
     assert open_ended.values.tolist() == [[0] * 5, [1] * 5]
 
 
+def test_the_state_of_a_heater_is_given_by_its_own_channel_or_by_that_of_its_logger():
+    head = "log,column,kind,id,point,quantity,unit,from,to\n"
+    signals = "north,a,probe,A,1,heated_emf,mV,,2031-05-02 12:00\nsouth,b,probe,B,1,heated_emf,mV,,"
+    own = "south,s,probe,B,,heater_state,1,2031-05-02 12:30,"
+    found = laid("heater_state_given", MAY_2, channels=f"{head}{signals}\n{own}")
+    # 12:30 of standard time is 11:30 UTC; middles 10:15, 10:45, 11:15, 11:45, 12:15.
+    assert found.values.tolist() == [[0] * 5, [0, 0, 0, 1, 1]]
+    loggers = "north,s,log,north,,heater_state,1,,"
+    found = laid("heater_state_given", MAY_2, channels=f"{head}{signals}\n{loggers}")
+    # The signal of A is on that logger until 11:00 UTC.
+    assert found.values.tolist() == [[1, 1, 0, 0, 0], [0] * 5]
+
+
 def test_heating_cycles_change_with_the_installation():
     times = ["2031-05-02T23:00", "2031-05-02T23:30"]  # the second begins at 0 h standard time
     found = laid("heating_on", times)
