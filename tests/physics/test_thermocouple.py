@@ -49,6 +49,15 @@ def test_sensitivity_agrees_to_six_decimals(celsius, microvolt_per_kelvin):
     assert found == pytest.approx(microvolt_per_kelvin, abs=0.5e-6)
 
 
+@pytest.mark.parametrize(
+    ("celsius", "stated"),
+    # Type T, computed from the ITS-90 polynomial and stated to one decimal.
+    [(5.0, 39.1), (15.0, 39.9), (25.0, 40.7), (35.0, 41.5)],
+)
+def test_sensitivity_across_the_temperatures_of_stems(celsius, stated):
+    assert thermocouple.sensitivity(celsius + 273.15) * 1e6 == pytest.approx(stated, abs=0.05)
+
+
 def test_whole_range_agrees_with_the_reference_library():
     # Same polynomials, so only rounding differs: 1e-12 V is 3e-8 K.
     celsius = np.linspace(-200, 400, 1201)
