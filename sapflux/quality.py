@@ -2,16 +2,23 @@
 
 A flag is a bit that is set and never dropped. A masking flag takes the record from every later
 step; a noting flag only tells. The measurement itself is never edited.
+
+In memory all flags of a record are one int64 word, `quality`. Files hold it as two int32 variables,
+each with flags of its own: `quality` has bits 0 to 30, what the steps of the pipeline say, and
+`faults` bits 31 to 61, what screens find wrong with an instrument. See `split` and `joined`.
 """
 
 from dataclasses import dataclass
 
 import numpy as np
 
+FIRST_FAULT = 31  # an int32 of a file has 31 bits beside its sign
+BITS = 2 * FIRST_FAULT
+
 
 @dataclass(frozen=True)
 class Flag:
-    """One bit of `quality`."""
+    """One bit of `quality`: 0 to 30 for a step of the pipeline, 31 to 61 for a fault."""
 
     name: str
     bit: int
@@ -23,7 +30,28 @@ class Flag:
         """The bit as a number."""
         return 1 << self.bit
 
+    @property
+    def is_fault(self):
+        """Whether files hold the bit in `faults`."""
+        return self.bit >= FIRST_FAULT
 
+
+def by_name(rows):
+    """Name -> flag. ValueError for a bit out of range, or two rows of one bit or one name."""
+    names, bits_taken = {}, {}
+    for row in rows:
+        if not 0 <= row.bit < BITS:
+            raise ValueError(f"flag {row.name!r}: bit {row.bit} is not one of 0 to {BITS - 1}")
+        if row.name in names:
+            raise ValueError(f"flag {row.name!r} has two rows")
+        if row.bit in bits_taken:
+            raise ValueError(f"flags {bits_taken[row.bit]!r} and {row.name!r} share bit {row.bit}")
+        names[row.name], bits_taken[row.bit] = row, row.name
+    return names
+
+
+# Of two flags on the same records the row above is told as the cause, whatever the bits: what a
+# screen finds stands above what follows from it.
 ROWS = [
     Flag("not_installed", 0, True, "no probe was installed"),
     Flag("no_record", 1, True, "the logger has no value here"),
@@ -55,11 +83,11 @@ ROWS = [
     Flag("lower_bound", 27, True, "upstream rise lost in noise: faster than the ratio can tell"),
 ]  # fmt: skip
 
-FLAGS = {row.name: row for row in ROWS}
+FLAGS = by_name(ROWS)
 # Flags that belong to the common step and to what is scaled from it, not to a record as logged.
 SCALED = {"partly_missing", "incomplete_step", "incomplete_radius", "few_trees", "borrowed"}
 NATIVE = tuple(name for name in FLAGS if name not in SCALED)
-MASKING = np.int32(sum(row.mask for row in ROWS if row.masks))
+MASKING = np.int64(sum(row.mask for row in ROWS if row.masks))
 
 ORIGINS = {
     "absent": 0,
@@ -72,34 +100,77 @@ ORIGINS = {
 
 
 def bits(**flagged):
-    """One int32 array of flag bits from boolean arrays by flag name. KeyError if unknown.
+    """One int64 array of flag bits from boolean arrays by flag name. KeyError if unknown.
 
     >>> bits(heater_failure=np.array([True, False]), log_domain=np.array([True, True]))
-    array([1056, 1024], dtype=int32)
+    array([1056, 1024])
     """
-    total = np.int32(0)
+    total = np.int64(0)
     for name, where in flagged.items():
-        total = total | np.where(where, np.int32(FLAGS[name].mask), np.int32(0))
+        total = total | np.where(where, np.int64(FLAGS[name].mask), np.int64(0))
     return total
 
 
 def masked(quality):
-    """Where a record may not be used."""
-    return (quality & MASKING) != 0
+    """Where a record may not be used. ValueError as for `has`."""
+    return (quality & _within(quality, MASKING)) != 0
 
 
 def has(quality, name):
-    """Where the flag `name` is set."""
-    return (quality & np.int32(FLAGS[name].mask)) != 0
+    """Where the flag `name` is set.
+
+    ValueError for a fault asked of an int32, which is the `quality` of a file without its `faults`.
+    """
+    return (quality & _within(quality, FLAGS[name].mask)) != 0
+
+
+def _within(quality, mask):
+    """The mask as an int64, if the integers of `quality` have its bits."""
+    if mask > np.iinfo(quality.dtype).max:
+        raise ValueError(f"{quality.dtype} holds no faults: join it with the `faults` of the file")
+    return np.int64(mask)
+
+
+def split(quality):
+    """The two int32 words of a file: (`quality`, `faults`).
+
+    >>> split(np.array([5 + (1 << 31) + (1 << 61)]))
+    (array([5], dtype=int32), array([1073741825], dtype=int32))
+    """
+    steps = quality & np.int64((1 << FIRST_FAULT) - 1)
+    return steps.astype(np.int32), (quality >> FIRST_FAULT).astype(np.int32)
+
+
+def joined(steps, faults):
+    """The int64 word from `quality` and `faults` of a file.
+
+    >>> joined(np.array([5], np.int32), np.array([1 | 1 << 30], np.int32)) - (1 << 31) - (1 << 61)
+    array([5])
+    """
+    return steps.astype(np.int64) | faults.astype(np.int64) << FIRST_FAULT
+
+
+def faults_defined():
+    """Names of the flags that files hold in `faults`."""
+    return {row.name for row in FLAGS.values() if row.is_fault}
 
 
 def quality_attributes():
-    """CF attributes of a `quality` variable."""
+    """CF attributes of the `quality` of a file."""
+    return _attributes([row for row in FLAGS.values() if not row.is_fault], 0)
+
+
+def faults_attributes():
+    """CF attributes of the `faults` of a file."""
+    return _attributes([row for row in FLAGS.values() if row.is_fault], FIRST_FAULT)
+
+
+def _attributes(rows, first):
     return {
-        "flag_masks": np.array([row.mask for row in ROWS], dtype=np.int32),
-        "flag_meanings": " ".join(row.name for row in ROWS),
+        "flag_masks": np.array([row.mask >> first for row in rows], dtype=np.int32),
+        "flag_meanings": " ".join(row.name for row in rows),
         "comment": "; ".join(
-            f"{row.name}: {row.meaning} ({'masks' if row.masks else 'notes'})" for row in ROWS
+            f"{row.name}: {row.meaning} ({'masks' if row.masks else 'notes'})" for row in rows
         ),
     }
 

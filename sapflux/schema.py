@@ -209,6 +209,8 @@ ROWS = [
              "sapwood area of the species per ground area of the stand"),
     Variable("quality", RECORD, "1", "what is known to be wrong with the record",
              "quality_flag"),
+    # Only in files: the second word of `quality`, see sapflux/quality.py
+    Variable("faults", RECORD, "1", "what is found wrong with the instrument", "quality_flag"),
     Variable("origin", RECORD, "1", "how the value came to be"),
 ]  # fmt: skip
 

@@ -133,7 +133,7 @@ def test_the_pair_is_subtracted_from_its_probe_alone(found):
     assert (others[np.isfinite(others)] == 0.0).all()
     # Its log ends in October, and without a reading there is no difference.
     late = bits.sel(probe="P02", point=1, time=slice("2031-10-01T00:00", "2031-10-20")).values
-    expected = ~quality.masked(late & ~np.int32(quality.FLAGS["no_gradient"].mask))
+    expected = ~quality.masked(late & ~np.int64(quality.FLAGS["no_gradient"].mask))
     assert quality.has(late, "no_gradient")[expected].all() and quality.masked(late).all()
     assert quality.has(bits.sel(probe="P02", time=early).values, "steep_gradient").any()
 

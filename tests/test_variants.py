@@ -9,7 +9,7 @@ import pytest
 from sapflux import quality, run_site
 from sapflux.cli import main
 from sapflux.errors import DataError, SiteError
-from sapflux.pipeline.api import summary
+from sapflux.pipeline.api import run_and_keep, summary
 from sapflux.pipeline.check import check_site
 from sapflux.pipeline.recipe import find_recipe
 
@@ -21,6 +21,11 @@ def site(tmp_path):
     folder = tmp_path / "orvelin"
     shutil.copytree(SITE, folder)
     return folder
+
+
+def run_alone(site, out):
+    """The run of a site without the methods beside."""
+    return run_and_keep(site, recipe="stand_water_use", out=out, beside=False)[0]
 
 
 def edit(site, table, change):
@@ -44,7 +49,7 @@ def test_an_unheated_pair_is_no_probe_of_flow(site, tmp_path):
         ),
     )
     edit(site, "pairs.csv", lambda text: "unheated,heated\nN01,P01\n")
-    run = run_site(site, out=tmp_path / "out")
+    run = run_alone(site, tmp_path / "out")
     assert "N01" not in run.probes["probe"].values
     assert "N01" in run.table("installations")["probe"].tolist()
 
@@ -55,7 +60,7 @@ def test_excluded_weather_sets_no_baseline(site, tmp_path):
         "exclusions.csv",
         'log,weather,2031-08-01 00:00,2031-12-01 00:00,"mouse in the shield",field crew',
     )
-    run = run_site(site, out=tmp_path / "out")
+    run = run_alone(site, tmp_path / "out")
     assert run.table("zero_flow_nights")["accepted"].sum() == 0
     assert quality.has(run.probes["quality"].sel(probe="P01", point=1).values, "no_baseline").all()
     (note,) = [text for text in run.record["notes"] if "(no_baseline)" in text]
@@ -148,7 +153,7 @@ def test_two_trees_are_too_few_and_every_refused_day_says_so(site, tmp_path):
         "recipe's stand_transpiration): it will have none"
     )
     assert note in check_site(site)["notes"]
-    daily = run_site(site, out=tmp_path / "out").table("daily")
+    daily = run_alone(site, tmp_path / "out").table("daily")
     beech = daily.query("stand == 'upper' and species == 'beech'")
     assert (beech["valid"] == 0).all()
     usual = beech["reason"].value_counts().idxmax()
@@ -165,7 +170,7 @@ def test_a_needle_short_of_the_sapwood_without_a_profile_is_told_and_flagged(sit
     )
     notes = check_site(site)["notes"]
     assert any("is deeper than the needles reach, and no profile says" in note for note in notes)
-    run = run_site(site, out=tmp_path / "out")
+    run = run_alone(site, tmp_path / "out")
     bits = run.probes["quality"].sel(probe="P01", point=1).values
     assert quality.has(bits, "incomplete_radius").any()
 
@@ -188,7 +193,7 @@ def test_a_mistyped_name_in_a_long_table_is_told(site, tmp_path):
         ),
     )
     append(site, "channels.csv", "rows,N1/vlots,log,rows,1,battery_voltage,V")
-    run = run_site(site, out=tmp_path / "out")
+    run = run_alone(site, tmp_path / "out")
     line = len((site / "channels.csv").read_text().splitlines())
     assert (
         f"{site}/channels.csv, row {line}: log 'rows' has no value of 'N1/vlots'. "
@@ -208,7 +213,7 @@ def test_hourly_logs_that_miss_the_half_hour_of_the_site_are_told_before_a_run(s
 
 
 def test_the_files_say_where_along_the_needle_a_value_was_measured(tmp_path):
-    run = run_site(SITE, out=tmp_path / "out")
+    run = run_alone(SITE, tmp_path / "out")
     probes = run.probes
     assert probes["radial_from"].sel(probe="P16").values.tolist() == [0.010, 0.025]
     assert probes["radial_to"].sel(probe="P16").values.tolist() == [0.015, 0.030]
@@ -223,7 +228,7 @@ def test_channels_that_leave_no_record_of_a_probe_are_told(site, tmp_path):
     late = [f"{row},2040-01-01" for row in rows]
     (site / "channels.csv").write_text("\n".join([head + ",from", *late]) + "\n")
     with pytest.raises(DataError) as caught:
-        run_site(site, out=tmp_path / "out")
+        run_alone(site, tmp_path / "out")
     first, *of_logs = map(str, caught.value.faults)
     assert first == (
         f"{site}: the downloads hold no record of a probe. Run `sapflux check {site}`; see from "
@@ -238,7 +243,7 @@ def test_channels_that_leave_no_record_of_a_probe_are_told(site, tmp_path):
 
 def test_a_column_in_the_wrong_unit_empties_the_totals_and_the_reason_is_told(site, tmp_path):
     edit(site, "channels.csv", lambda text: text.replace("heated_emf,mV", "heated_emf,V"))
-    run = run_site(site, out=tmp_path / "out")
+    run = run_alone(site, tmp_path / "out")
     (note,) = [text for text in run.record["notes"] if "(out_of_range)" in text]
     assert note == (
         "P01, P02, P03, P04, P05, P06, P07, P08, P09, P10: hardly any record can be used: beyond "
@@ -276,7 +281,7 @@ def test_a_clock_that_fell_back_to_its_epoch_stretches_nothing_and_is_told(site,
     lines = path.read_text(encoding="utf-8").splitlines(keepends=True)
     lost = [line.replace('"2031-09-', '"1990-01-', 1) for line in lines[1000:1100]]
     path.write_text("".join([*lines[:1000], *lost, *lines[1100:]]), encoding="utf-8")
-    run = run_site(site, out=tmp_path / "out")
+    run = run_alone(site, tmp_path / "out")
     assert str(run.probes["time"].values[0]) > "2031"
     assert "100 records of log 'upper' lie outside the installations of its probes" in " ".join(
         run.record["notes"]

@@ -28,21 +28,20 @@ def pairs_of(rows, least_age_difference_d, fewest_common_days):
     """
     made = []
     for (_, point), of_group in rows.groupby(["group", "point"], sort=True):
-        series = {
-            (probe, point, int(number)): own.set_index("start")
-            for (probe, number), own in of_group.groupby(["probe", "installation"], sort=True)
-        }
-        for one, other in combinations(series, 2):
-            days = series[one].index.intersection(series[other].index)
+        laid = of_group.pivot(index=["probe", "installation"], columns="start")
+        keys = [(probe, point, int(number)) for probe, number in laid.index]
+        age, index = (laid[name].to_numpy(dtype=float) for name in ("age_d", "index"))
+        seen = np.isfinite(index)
+        for one, other in combinations(range(len(keys)), 2):
+            days = np.flatnonzero(seen[one] & seen[other])
             if len(days) < fewest_common_days:
                 continue
-            first, second = series[one].loc[days], series[other].loc[days]
-            older = float((first["age_d"] - second["age_d"]).mean())
-            ratio = float(np.log(first["index"] / second["index"]).mean())
+            older = float((age[one, days] - age[other, days]).mean())
+            ratio = float(np.log(index[one, days] / index[other, days]).mean())
             if older >= least_age_difference_d:
-                made.append(Pair(one, other, len(days), older, ratio))
+                made.append(Pair(keys[one], keys[other], len(days), older, ratio))
             elif -older >= least_age_difference_d:
-                made.append(Pair(other, one, len(days), -older, -ratio))
+                made.append(Pair(keys[other], keys[one], len(days), -older, -ratio))
     return sorted(made, key=lambda pair: (pair.older, pair.younger))
 
 

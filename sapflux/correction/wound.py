@@ -87,8 +87,8 @@ def wound(
     beyond_wound_limit : (probe, point, time) [bool]
         Apparent velocity beyond the highest, up or down.
     no_wound_width : (probe, point, time) [bool]
-        No width, or for the cubic one outside the table; for the strip also where the needles,
-        the window or the pulse are not known.
+        No width, or for the cubic one outside the table or a probe that is read otherwise than
+        the table's; for the strip also where the needles, the window or the pulse are not known.
     no_wood_sample : (probe, point, time) [bool]
         For the strip, where the diffusivity is missing.
 
@@ -96,7 +96,8 @@ def wound(
     derivation, see `sapflux.physics.wound_strip`.
     """
     if method == "published":
-        corrected, highest = _published(heat_pulse_velocity, wound_width)
+        layout = spacing_downstream, spacing_upstream, window_from, window_to
+        corrected, highest = _published(heat_pulse_velocity, wound_width, layout)
         unknown, unsampled = highest.isnull(), None
     else:
         geometry = spacing_downstream, spacing_upstream, window_from, window_to, pulse_length
@@ -122,12 +123,16 @@ def wound(
     }
 
 
-def _published(velocity, width):
-    """Corrected velocity, and the highest apparent one [m s-1], NaN for widths not in the table."""
+def _published(velocity, width, layout):
+    """Corrected velocity, and the highest apparent one [m s-1]; NaN for widths not in the table,
+    and for probes read otherwise than the table's.
+    """
     corrected = xr.apply_ufunc(heat_pulse.wound_velocity, velocity, width)
     # The cubic of no velocity tells whether the width is one that the table covers.
     covered = xr.apply_ufunc(heat_pulse.wound_velocity, xr.zeros_like(width), width)
-    return corrected, covered + heat_pulse.HIGHEST_WOUND_VELOCITY
+    if all(fact is not None for fact in layout):
+        covered = covered.where(heat_pulse.is_published_layout(*layout))
+    return corrected.where(covered.notnull()), covered + heat_pulse.HIGHEST_WOUND_VELOCITY
 
 
 def _strip(velocity, width, diffusivity, *geometry, reading):

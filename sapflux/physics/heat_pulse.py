@@ -28,6 +28,8 @@ PUBLISHED_WOUND = np.array(
 )
 PUBLISHED_SPACING = 6e-3  # m
 PUBLISHED_WINDOW = (60.0, 100.0)  # s since the end of heating
+# How far needles and window may be from these for the table to be taken. Source: own judgement.
+PUBLISHED_SPACING_SLACK, PUBLISHED_WINDOW_SLACK = 0.5e-3, 5.0
 NARROWEST_WOUND = 1.7e-3  # m, ends of the published table
 WIDEST_WOUND = 3.0e-3
 # Above this the cubic runs away (at 3.0 mm it turns 60 into 344 cm h-1). Common practice.
@@ -98,6 +100,24 @@ def log_ratio_of(velocity, diffusivity, spacing):
     1.0
     """
     return velocity * spacing / diffusivity
+
+
+def is_published_layout(spacing_downstream, spacing_upstream, window_from, window_to):
+    """Whether a probe is read about as those of the published wound table.
+
+    Spacings [m], window [s] since the end of heating; what is NaN is not held against it.
+
+    >>> [bool(is_published_layout(x, 6e-3, 60.0, 100.0)) for x in (6e-3, 5e-3)]
+    [True, False]
+    """
+    begin, end = PUBLISHED_WINDOW
+    spacing, window = PUBLISHED_SPACING_SLACK + 1e-9, PUBLISHED_WINDOW_SLACK + 1e-9
+    return ~(
+        (np.abs(spacing_downstream - PUBLISHED_SPACING) > spacing)
+        | (np.abs(spacing_upstream - PUBLISHED_SPACING) > spacing)
+        | (np.abs(window_from - begin) > window)
+        | (np.abs(window_to - end) > window)
+    )
 
 
 def wound_velocity(velocity, width):

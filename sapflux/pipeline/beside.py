@@ -29,11 +29,12 @@ def scaling_beside(site, cube, weather):
     """As `probe_chain_beside`, with the facts of trees and stands."""
     of_probes = probe_chain_beside(site, cube, weather)
     trees = list(dict.fromkeys(facts.labels(site, list(cube["probe"].values))["tree"]))
+    of_trees = facts.tree_facts(site, trees)
 
     def beside(ends, wanted):
         found = of_probes(ends, wanted)
         if "sapwood_area" in wanted:
-            found |= facts.tree_facts(site, trees)
+            found |= of_trees
         if {"sapwood_per_ground", "in_leaf"} & set(wanted):
             found |= facts.stand_facts(site, ends)
         return found

@@ -76,7 +76,7 @@ def compute(site, recipe, *, native=False, block_days=BLOCK_DAYS, logs=None, kno
         )
         raise DataError([nothing, *silent_logs(site, logs)])
     joined = Joined(list(cubes.values()), ends, step_s, recipe.join["least_coverage"])
-    counts, answered = FlagCounts(), {}
+    counts, chains = FlagCounts(), {}
     for (method, interval_s), cube in cubes.items():
         chain = Chain(
             cube,
@@ -85,8 +85,9 @@ def compute(site, recipe, *, native=False, block_days=BLOCK_DAYS, logs=None, kno
             offset=site.offset,
             known=known(method, cube),
         )
-        here = answered[method, interval_s] = answered_records(site, logs, cube)
-        _run_method(chain, joined, found, counts, here, native, block_days)
+        answered = answered_records(site, logs, cube)
+        tables = _run_method(chain, joined, found, counts, answered, native, block_days)
+        chains[method, interval_s] = chain, tables, answered
         found.history += [f"{step.line()} at {interval_s} s" for step in chain.steps]
     stopwatch.lap("correct")
     found.probes = unscaled = labelled(site, joined.dataset())
@@ -107,9 +108,7 @@ def compute(site, recipe, *, native=False, block_days=BLOCK_DAYS, logs=None, kno
     stopwatch.lap("total")
     chosen, left_out = methods_beside(site, recipe)
     if chosen:
-        corrected = Corrected(
-            cubes, answered, unscaled, found.probes, weather, days, found.evidence
-        )
+        corrected = Corrected(chains, unscaled, found.probes, weather, days, found.evidence)
         found.beside = run_beside(site, recipe, corrected, chosen, block_days)
         found.tables |= found.beside.tables()
     found.notes += notes_of_methods(left_out)
@@ -138,6 +137,7 @@ def _read_logs(site):
 
 
 def _run_method(chain, joined, found, counts, answered, native, block_days):
+    """Correct and join the probes of one cube; returns the tables its stages were fitted to."""
     tables = fitted_tables(chain, block_days)
     for name, rows in tables.items():
         known = found.evidence.get(name)
@@ -168,6 +168,7 @@ def _run_method(chain, joined, found, counts, answered, native, block_days):
         found.native[chain.cube.attrs["method"], chain.interval_s] = whole.assign_attrs(
             chain.cube.attrs
         )
+    return tables
 
 
 def _native_part(chain, working, bits, core):

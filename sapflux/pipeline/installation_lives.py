@@ -23,7 +23,7 @@ class FlagCounts:
         self.records, self.flagged, self.good, self.flux, self.change = {}, {}, {}, {}, {}
 
     def add(self, cube, installation, bits, answered):
-        """installation : (probe, time) int; bits : (probe, point, time) int32 flags;
+        """installation : (probe, time) int; bits : (probe, point, time) int64 flags;
         answered : (probe, point, time) bool, records that a channel of the cube covers."""
         for row, name in enumerate(cube["probe"].values):
             for number in np.unique(installation[row][installation[row] >= 0]):

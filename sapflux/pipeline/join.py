@@ -48,7 +48,7 @@ class Joined:
         self.total = np.zeros(shape)  # flux density times the covered time
         self.covered = np.zeros(shape, dtype=np.int32)  # s
         self.answered = np.zeros(shape, dtype=bool)
-        self.quality = np.zeros(shape, dtype=np.int32)
+        self.quality = np.zeros(shape, dtype=np.int64)
 
     def add(self, probes, flux, bits, record_ends, interval_s, answered=None):
         """Lay the core of one block of one cube: names of its probes, (probe, point, time).
@@ -77,7 +77,7 @@ class Joined:
         self.total[here] += np.where(there, values, 0.0).sum(axis=-1) * interval_s
         self.covered[here] += there.sum(axis=-1, dtype=np.int32) * interval_s
         self.answered[here] |= laid(answered, False).any(axis=-1)
-        flags = laid(np.where(answered, bits, np.int32(0)), 0)
+        flags = laid(np.where(answered, bits, np.int64(0)), 0)
         self.quality[here] |= np.bitwise_or.reduce(flags, axis=-1)
 
     def add_block(self, chain, block, working, answered):

@@ -33,7 +33,8 @@ COUNTED = {
 }
 SUMS = {"precipitation", "throughfall"}
 ENUMERATED = {"origin", "stand_origin"}
-NOT_AVERAGED = {"quality", *ENUMERATED, "installation", "live_trees", "in_leaf"}
+FLAGS = {"quality", "faults", *ENUMERATED}
+NOT_AVERAGED = {*FLAGS, "installation", "live_trees", "in_leaf"}
 ANCILLARY = {
     "tree_flow": ("tree_filled_share",),
     "probe_flow": ("probe_filled_share",),
@@ -142,6 +143,7 @@ def write_netcdf(dataset, path):
 def _series(dataset, level, instance, site, attributes):
     """A file of time series of one kind of thing, all on one regular clock."""
     step_s = int(dataset.attrs.get("interval_s", site.position.common_step_min * 60))
+    dataset = _with_words(dataset, level)
     made = _described(dataset.transpose(instance, ..., "time"), instance, site)
     ends = dataset["time"].values.astype("datetime64[s]")
     starts = ends - np.timedelta64(step_s, "s")
@@ -160,14 +162,34 @@ def _series(dataset, level, instance, site, attributes):
     return _finished(made, level, site, starts, ends, step_s, attributes)
 
 
+def _with_words(dataset, level):
+    """The dataset with its flags as the int32 words of a file: see `quality.split`.
+
+    `faults` is left out where no fault can be set. Files of the stand hold only the flags of what
+    is scaled; files at the native step hold none of them.
+    """
+    if "quality" not in dataset:
+        return dataset
+    steps, faults = quality.split(dataset["quality"])
+    known = quality.faults_defined()
+    own = {"native": known - quality.SCALED, "stand": known & quality.SCALED}.get(level, known)
+    if own:
+        return dataset.assign(quality=steps, faults=faults)
+    if faults.any():
+        raise ValueError(f"{level}: a fault is set that is not one of this level")
+    return dataset.assign(quality=steps)
+
+
 def _ancillary(name):
     """Names of the variables that tell of the variable, if the file has them."""
-    return () if _content(name) in TELLING else ("quality", "origin", *ANCILLARY.get(name, ()))
+    if _content(name) in TELLING:
+        return ()
+    return ("quality", "faults", "origin", *ANCILLARY.get(name, ()))
 
 
 def _content(name):
     """What kind of content a variable is, by the vocabulary of ACDD."""
-    if name in {"quality", *ENUMERATED}:
+    if name in FLAGS:
         return "qualityInformation"
     return "auxiliaryInformation" if name in AUXILIARY or name in COUNTED else "physicalMeasurement"
 
@@ -257,9 +279,11 @@ def _attributes(name):
         attrs["long_name"] += ", as logged"
     if name == "quality":
         attrs |= quality.quality_attributes()
+    if name == "faults":
+        attrs |= quality.faults_attributes()
     if name in ENUMERATED:
         attrs |= quality.origin_attributes()
-    if name in {"quality", *ENUMERATED}:
+    if name in FLAGS:
         del attrs["units"]  # flags have none
     return attrs
 

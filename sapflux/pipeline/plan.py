@@ -6,7 +6,12 @@ from sapflux.errors import Fault, RecipeError
 from sapflux.ingest.cube import METHODS, OWNER_OF, probe_names
 from sapflux.ingest.unheated import natural_names
 from sapflux.ingest.weather import weather_names
-from sapflux.physics.heat_pulse import PUBLISHED_SPACING, PUBLISHED_WINDOW
+from sapflux.physics.heat_pulse import (
+    PUBLISHED_SPACING,
+    PUBLISHED_SPACING_SLACK,
+    PUBLISHED_WINDOW,
+    PUBLISHED_WINDOW_SLACK,
+)
 from sapflux.pipeline.recipe import ALL
 from sapflux.schema import SIGNALS, TRACED, TRACES
 from sapflux.site.installations import heating
@@ -16,8 +21,6 @@ from sapflux.units import MM
 SUN = {"solar_elevation", "solar_time"}
 # What needles and windows may differ by from those of the published wound correction: as needles
 # go into wood, and by which it changes by less than 2 %. Source: own judgement.
-SPACING_SLACK = 0.5  # mm
-WINDOW_SLACK = 5.0  # s
 
 
 def methods_of(site):
@@ -66,7 +69,7 @@ def methods_beside(site, recipe):
             every = [method for method in _choices(step.stage) if method != own]
             for method in every if step.beside == (ALL,) else step.beside:
                 met = set(step.stage.method_needs.get(method, ())) <= available
-                met = met and not (_is_published_wound(step, method) and _other_layouts(site))
+                met = met and not (_is_published_wound(step, method) and _all_other_layouts(site))
                 (chosen if met else left_out).append((chain, step.stage.name, method))
             available |= {*step.stage.makes, step.stage.table} - {""}
     return chosen, left_out
@@ -251,6 +254,12 @@ def _wound_faults(site, recipe):
         )
 
 
+def _all_other_layouts(site):
+    """Whether the published wound correction is for none of the site's heat ratio probes."""
+    rows = [row for row in site.table("probes") if row.method == "heat_ratio"]
+    return bool(rows) and len(_other_layouts(site)) == len(rows)
+
+
 def _other_layouts(site):
     """One fault a probe whose needles or window the published wound correction is not for."""
     faults = []
@@ -261,9 +270,9 @@ def _other_layouts(site):
         needles = [row.spacing_downstream_mm, row.spacing_upstream_mm]
         window = [row.window_from_s, row.window_to_s]
         has = []
-        if not _near(needles, [usual, usual], SPACING_SLACK):
+        if not _near(needles, [usual, usual], PUBLISHED_SPACING_SLACK / MM):
             has.append(f"needles {' and '.join(map(_written, needles))} mm from the heater")
-        if not _near(window, [begin, end], WINDOW_SLACK):
+        if not _near(window, [begin, end], PUBLISHED_WINDOW_SLACK):
             has.append(f"a window of {' to '.join(map(_written, window))} s")
         if has:
             faults.append(Fault(

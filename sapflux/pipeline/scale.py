@@ -71,8 +71,9 @@ def _flags_of(dim):
 
 
 def _along_time(values, time):
-    whole = xr.concat(values, "time", coords="minimal", compat="override", join="override")
-    return whole.assign_coords(time=time.values)
+    whole = xr.Variable.concat([value.variable for value in values], "time")
+    fixed = {name: c for name, c in values[0].coords.items() if "time" not in c.dims}
+    return xr.DataArray(whole, fixed | {"time": time.values})
 
 
 def _probes(site, probes, made):
@@ -116,8 +117,8 @@ def _described_trees(trees, probes):
     origin = np.where(filled, kinds["interpolated"], kinds["measured"])
     origin = np.where(np.isfinite(trees["tree_flow"].values), origin, kinds["absent"])
     dims = ("tree", "time")
-    own = trees["quality"].values if "quality" in trees else np.int32(0)
+    own = trees["quality"].values if "quality" in trees else np.int64(0)
     return trees.assign(
-        quality=(dims, np.array(of_tree, dtype=np.int32) | own),
+        quality=(dims, np.array(of_tree, dtype=np.int64) | own),
         origin=(dims, origin.astype(np.int8)),
     )

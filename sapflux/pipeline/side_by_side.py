@@ -1,17 +1,18 @@
 """Methods beside the recipe's own: the chain run again with another method of one stage.
 
 The records, the days and everything else stay the same, so a difference is that method's alone.
+All methods of a stage run together, so that what comes before the stage is done once a block.
 Only days and steps on which both have a value are compared.
 """
 
 from dataclasses import dataclass, field
+from itertools import groupby, pairwise
 
 import numpy as np
 import pandas as pd
 import xarray as xr
 
-from sapflux.pipeline.beside import probe_chain_beside
-from sapflux.pipeline.execute import Chain, fitted_tables, run_blocks
+from sapflux.pipeline.execute import fit_variants, run_variants, variants_of
 from sapflux.pipeline.join import Joined
 from sapflux.pipeline.scale import scale
 from sapflux.pipeline.total_tables import days_of
@@ -38,13 +39,12 @@ PROBE_COLUMNS = (
 class Corrected:
     """What a run has in memory once its probes are corrected and joined.
 
-    cubes : (method, interval) -> measured cube; answered : the same keys -> records that a
-    channel covers; probes : the joined Dataset, and `scaled` what scaling made of it;
-    weather : name -> series; days : `Days` of the recipe's own methods; evidence : their tables.
+    chains : (method, interval) -> (Chain, its fitted tables, records that a channel covers);
+    probes : the joined Dataset, and `scaled` what scaling made of it; weather : name -> series;
+    days : `Days` of the recipe's own methods; evidence : their tables.
     """
 
-    cubes: dict
-    answered: dict
+    chains: dict
     probes: xr.Dataset
     scaled: xr.Dataset
     weather: dict
@@ -72,12 +72,8 @@ def run_beside(site, recipe, corrected, chosen, block_days):
     """
     stands, probes, evidence = [], [], []
     own = _own_admissible(recipe, corrected)
-    for chain, stage, method in chosen:
-        other = recipe.with_method(chain, stage, method)
-        key = {"chain": chain, "stage": stage, "method": method}
-        joined, tables = corrected.probes, {}
-        if chain != "scaling":
-            joined, tables = _corrected_again(site, other, corrected, chain, block_days)
+    for key, other, joined, tables in _each(recipe, corrected, chosen, block_days):
+        chain, stage, method = key.values()
         scaled = scale(site, other, joined, corrected.weather, block_days)
         if scaled.stand is not None:
             days = days_of(site, other, scaled.stand, corrected.weather)
@@ -100,23 +96,37 @@ def run_beside(site, recipe, corrected, chosen, block_days):
     )
 
 
-def _corrected_again(site, recipe, corrected, method, block_days):
-    """The joined probes with those of `method` corrected by the recipe, and its tables."""
-    keys = [key for key in corrected.cubes if key[0] == method]
+def _each(recipe, corrected, chosen, block_days):
+    """Yield (names, recipe, joined probes, tables) of each of the chosen methods."""
+    for (chain, stage), group in groupby(chosen, key=lambda one: one[:2]):
+        methods = [method for _, _, method in group]
+        others = [recipe.with_method(chain, stage, method) for method in methods]
+        made = [(corrected.probes, {})] * len(others)
+        if chain != "scaling":
+            made = _corrected_again(others, corrected, chain, block_days)
+        for method, other, (joined, tables) in zip(methods, others, made, strict=True):
+            yield {"chain": chain, "stage": stage, "method": method}, other, joined, tables
+
+
+def _corrected_again(recipes, corrected, method, block_days):
+    """Yield the joined probes with those of `method` corrected by each recipe, and its tables."""
+    own = [parts for key, parts in corrected.chains.items() if key[0] == method]
     ends = corrected.probes["time"].values.astype("datetime64[s]")
     step_s = int(corrected.probes.attrs["interval_s"])
-    cubes = [corrected.cubes[key] for key in keys]
-    joined = Joined(cubes, ends, step_s, recipe.join["least_coverage"])
-    tables = {}
-    for key, cube in zip(keys, cubes, strict=True):
-        beside = probe_chain_beside(site, cube, corrected.weather)
-        chain = Chain(cube, recipe.chains[method], beside, offset=site.offset)
-        fitted = fitted_tables(chain, block_days)
-        for name, rows in fitted.items():
-            tables[name] = pd.concat([tables[name], rows]) if name in tables else rows
-        for block, working in run_blocks(chain, fitted, block_days):
-            joined.add_block(chain, block, working, corrected.answered[key])
-    return _with_probes(corrected.probes, joined.dataset()), tables
+    cubes = [chain.cube for chain, _, _ in own]
+    joined = [Joined(cubes, ends, step_s, recipe.join["least_coverage"]) for recipe in recipes]
+    fitted = [{} for _ in recipes]
+    for chain, known, answered in own:
+        variants = variants_of(chain, known, [recipe.chains[method] for recipe in recipes])
+        fit_variants(chain, variants, block_days)
+        for block, workings in run_variants(chain, variants, block_days):
+            for one, working in zip(joined, workings, strict=True):
+                one.add_block(chain, block, working, answered)
+        for whole, (_, tables) in zip(fitted, variants, strict=True):
+            for name, rows in tables.items():
+                whole[name] = pd.concat([whole[name], rows]) if name in whole else rows
+    for one, tables in zip(joined, fitted, strict=True):
+        yield _with_probes(corrected.probes, one.dataset()), tables
 
 
 def _with_probes(whole, part):
@@ -203,20 +213,23 @@ def _probe_rows(site, ours, theirs, method, corrected):
     """
     ends = ours["time"].values.astype("datetime64[s]")
     step_s = int(ours.attrs["interval_s"])
-    months = site.day_of(ends).astype("datetime64[M]")
-    names = {str(name) for key, cube in corrected.cubes.items() if key[0] == method
-             for name in cube["probe"].values}  # fmt: skip
+    months, begins = np.unique(site.day_of(ends).astype("datetime64[M]"), return_index=True)
+    spans = [slice(*pair) for pair in pairwise([*begins, len(ends)])]
+    names = {str(name) for key, (chain, *_) in corrected.chains.items() if key[0] == method
+             for name in chain.cube["probe"].values}  # fmt: skip
     first, second = ours["probe_flow"].values, theirs["probe_flow"].values
     both = np.isfinite(first) & np.isfinite(second)
     ground = _ground_per_flow(site, ours)
     for row, probe in enumerate(ours["probe"].values.astype(str)):
         if probe not in names or np.isnan(ground[row]):
             continue
-        for month in np.unique(months[both[row]]):
-            here = both[row] & (months == month)
-            of_recipe = np.isfinite(first[row]) & (months == month)
+        for month, span in zip(months, spans, strict=True):
+            here = both[row, span]
+            if not here.any():
+                continue
+            of_recipe = np.isfinite(first[row, span])
             recipe, beside = (
-                float(own[row, here].sum() * step_s * ground[row]) for own in (first, second)
+                float(own[row, span][here].sum() * step_s * ground[row]) for own in (first, second)
             )
             yield {
                 "probe": probe,
@@ -269,14 +282,13 @@ def with_spread(rows, own):
     differences over a few of them say nothing of the month. The recipe's own, at a difference of
     0, counts where it is admissible. NaN without any.
     """
-    keys = ["chain", "stage", "probe", "start"]
-    spread = {}
-    for key, group in rows.groupby(keys, sort=False):
-        chain, stage, probe, _ = key
-        counts = (group[ADMISSIBLE] == 1) & (group["compared_fraction"] >= NEARLY_ALL_HOURS)
-        differences = list(group["difference_mm"][counts])
-        if own.get((chain, stage), {}).get(probe, True):
-            differences.append(0.0)
-        spread[key] = max(differences) - min(differences) if differences else np.nan
-    found = [spread[key] for key in rows[keys].itertuples(index=False, name=None)]
-    return rows.assign(spread_mm=np.array(found, dtype=float))
+    counts = (rows[ADMISSIBLE] == 1) & (rows["compared_fraction"] >= NEARLY_ALL_HOURS)
+    differences = rows["difference_mm"].where(counts).astype(float)
+    of_month = differences.groupby([rows[key] for key in ("chain", "stage", "probe", "start")])
+    may = [
+        own.get((chain, stage), {}).get(probe, True)
+        for chain, stage, probe in zip(rows["chain"], rows["stage"], rows["probe"], strict=True)
+    ]
+    recipes = np.where(np.array(may, dtype=bool), 0.0, np.nan)
+    highest, lowest = (of_month.transform(extreme).to_numpy() for extreme in ("max", "min"))
+    return rows.assign(spread_mm=np.fmax(highest, recipes) - np.fmin(lowest, recipes))

@@ -107,7 +107,7 @@ def stand_facts(site, times_end):
     in_leaf = laying.named("in_leaf", ("stand_species", "time"), leaf)
     return {
         "sapwood_per_ground": per_ground.assign_coords(coords),
-        "in_leaf": in_leaf.assign_coords(coords).assign_coords(time=ends),
+        "in_leaf": in_leaf.assign_coords(coords | {"time": ends}),
     }
 
 

@@ -6,6 +6,8 @@ baseline, an offset or a wound, reaches across.
 
 import numpy as np
 
+STILL_IN = np.datetime64("NaT", "s")  # sorts after every time
+
 
 def episodes(site, probe):
     """Rows of `probes.csv` of a probe, earliest first: their places are installation numbers."""
@@ -50,19 +52,14 @@ def installation_numbers(site, probes, times_end, interval_s):
 
     A record belongs where its whole interval lies in [installed, removed).
 
-    times_end : (time) datetime64, ends of the records [UTC]; interval_s : their length [s].
+    times_end : (time) datetime64, ends of the records in order [UTC]; interval_s : length [s].
     """
     begins = times_end - np.timedelta64(int(interval_s), "s")
-    numbers = latest_begun(site, probes, times_end, interval_s)
+    numbers = np.full((len(probes), len(times_end)), -1, dtype=np.int16)
     for place, probe in enumerate(probes):
-        rows = episodes(site, probe)
-        if not rows:
-            numbers[place] = -1
-            continue
-        own = numbers[place]
-        installed = np.array([site.utc(row.installed) for row in rows])
-        still_in = np.datetime64("NaT", "s")
-        removed = np.array([site.utc(row.removed, still_in) for row in rows])[own]
-        inside = (begins >= installed[own]) & ((times_end <= removed) | np.isnat(removed))
-        numbers[place] = np.where(inside, own, -1)
+        for number, row in enumerate(episodes(site, probe)):
+            first = np.searchsorted(begins, site.utc(row.installed))
+            last = np.searchsorted(times_end, site.utc(row.removed, STILL_IN), side="right")
+            numbers[place, first:] = -1  # what began last counts
+            numbers[place, first:last] = number
     return numbers

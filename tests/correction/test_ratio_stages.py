@@ -238,6 +238,22 @@ def test_wound_published(width_mm, cm_h):
     assert (down, none) == (-up, 0.0)
 
 
+def test_the_published_wound_is_not_taken_for_probes_read_otherwise():
+    # The table is of needles 6 mm from the heater read 60 to 100 s after it; NaN is not known.
+    velocity = record(np.full((4, 1, 1), 10 * CM_H))
+    layout = {
+        "spacing_downstream": [6e-3, 5e-3, 6e-3, np.nan],
+        "spacing_upstream": [6e-3, 5e-3, 6e-3, 6e-3],
+        "window_from": [60.0, 60.0, 30.0, 62.0],
+        "window_to": [100.0, 100.0, 60.0, 98.0],
+    }
+    facts = [fact(values, velocity) for values in layout.values()]
+    made = call("wound", velocity, fact([2e-3] * 4, velocity), None, *facts)
+    assert made["no_wound_width"].values[:, 0, 0].tolist() == [False, True, True, False]
+    known = np.isfinite(made["heat_pulse_velocity"].values[:, 0, 0])
+    assert known.tolist() == [True, False, False, True]
+
+
 def test_wound_is_linear_in_width_between_rows_by_hand():
     velocity = record([30 * CM_H])
     found = [

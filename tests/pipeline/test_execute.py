@@ -21,7 +21,7 @@ def chain(steps, days=9, values=None):
     cube = xr.Dataset(
         {
             "heated_difference": (schema.RECORD, values),
-            "quality": (schema.RECORD, np.zeros(values.shape, np.int32)),
+            "quality": (schema.RECORD, np.zeros(values.shape, np.int64)),
         },
         {"probe": ["T01", "T02"], "point": [1], "time": time},
         attrs={"interval_s": INTERVAL},

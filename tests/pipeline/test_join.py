@@ -23,7 +23,7 @@ def joined(values, flags=None, first_end="2031-06-01T00:10", least=0.6):
     one = cube(first_end, len(values), 600)
     ends = one["time"].values.astype("datetime64[s]")
     result = Joined([one], common_grid([one], 1800), 1800, least)
-    bits = np.zeros(len(values), np.int32) if flags is None else np.array(flags, np.int32)
+    bits = np.zeros(len(values), np.int64) if flags is None else np.array(flags, np.int64)
     result.add(["T01"], np.array(values, float)[None, None], bits[None, None], ends, 600)
     return result.dataset()
 
@@ -45,6 +45,14 @@ def test_a_step_with_enough_records_keeps_the_flags_of_the_others():
     assert quality.has(bits, "heater_failure").all()
     assert quality.has(bits, "partly_missing").all()
     assert not quality.has(bits, "incomplete_step").any()
+
+
+def test_a_step_keeps_flags_that_a_float_could_not_hold():
+    # 2**61 + 1 has more digits than a float64 has
+    step = joined([1, 3, NAN], [0, 1 << 31, 1 << 61 | FAILED | 1])["quality"]
+    assert step.dtype == np.int64
+    own = quality.bits(partly_missing=np.array(True)) | 1 << 61 | 1 << 31 | FAILED | 1
+    assert step.values.ravel().tolist() == [own]
 
 
 def test_records_fall_into_the_step_that_ends_after_them():
@@ -69,9 +77,9 @@ def test_a_probe_that_moved_to_a_slower_logger_stays_one_probe():
     for one, values in [(fast, [1, 1, 1, 2, 2, 2]), (slow, [3, 4])]:
         ends = one["time"].values.astype("datetime64[s]")
         flux = np.array(values, float)[None, None]
-        bits = np.zeros(flux.shape, np.int32)
+        bits = np.zeros(flux.shape, np.int64)
         result.add(["T01"], flux, bits, ends, int(one.attrs["interval_s"]))
-    silent = np.full((1, 1, 2), NAN), np.full((1, 1, 2), NO_RECORD, np.int32)
+    silent = np.full((1, 1, 2), NAN), np.full((1, 1, 2), NO_RECORD, np.int64)
     early = np.array(["2031-06-01T00:30", "2031-06-01T01:00"], "M8[s]")
     result.add(["T01"], *silent, early, 1800)
     assert result.dataset()["flux_density"].values.tolist() == [[[1, 2, 3, 4]]]

@@ -15,9 +15,11 @@ import netCDF4
 import numpy as np
 import pytest
 import xarray as xr
+from flags_by_hand import flags_defined
 
 from sapflux import quality, schema
 from sapflux.pipeline import netcdf
+from sapflux.quality import Flag
 from sapflux.site.config import Position
 from sapflux.site.model import Site
 
@@ -63,7 +65,7 @@ def numbers(*shape):
 
 def probes():
     record, probe = ("probe", "point", "time"), ("probe", "time")
-    bits = np.zeros((3, 2, COUNT), dtype=np.int32)
+    bits = np.zeros((3, 2, COUNT), dtype=np.int64)
     bits[0, 0, :5] = quality.FLAGS["heater_failure"].mask | quality.FLAGS["no_record"].mask
     return xr.Dataset(
         {
@@ -90,7 +92,7 @@ def trees():
         {
             "tree_flow": (dims, numbers(2, COUNT)),
             "tree_filled_share": (dims, np.zeros((2, COUNT))),
-            "quality": (dims, np.zeros((2, COUNT), dtype=np.int32)),
+            "quality": (dims, np.zeros((2, COUNT), dtype=np.int64)),
         },
         {"tree": ["T1", "T2"], "time": ENDS, "species": ("tree", ["beech", "oak"]),
          "stand": ("tree", ["upper", "upper"])},
@@ -105,7 +107,7 @@ def stand():
             "stand_filled_share": (dims, np.zeros((2, COUNT))),
             "live_trees": (dims, np.full((2, COUNT), 4)),
             "in_leaf": (dims, np.ones((2, COUNT))),
-            "quality": (dims, np.zeros((2, COUNT), dtype=np.int32)),
+            "quality": (dims, np.zeros((2, COUNT), dtype=np.int64)),
             "origin": (dims, np.ones((2, COUNT), dtype=np.int8)),
         },
         {"stand_species": ["upper/beech", "upper/oak"], "time": ENDS,
@@ -126,7 +128,7 @@ def native(method):
         | {
             "heater_voltage": (("probe", "time"), numbers(2, COUNT)),
             "installation": (("probe", "time"), np.zeros((2, COUNT), dtype=np.int64)),
-            "quality": (record, np.zeros((2, 1, COUNT), dtype=np.int32)),
+            "quality": (record, np.zeros((2, 1, COUNT), dtype=np.int64)),
         },
         {"probe": ["T1-N", "T1-S"], "point": [1], "time": ENDS},
         attrs={"method": method, "interval_s": 600},
@@ -283,6 +285,23 @@ def test_flags_are_ancillary_and_told_by_name(files):
         assert origins.flag_values.dtype == origins.dtype == np.int8
 
 
+@pytest.mark.parametrize("scaled", [(), ("fault",)])
+def test_faults_are_written_where_one_can_be_set(scaled):
+    assert not any("faults" in make(RUN) for make in MADE.values())
+    with flags_defined(Flag("fault", 40, True, "a fault"), scaled=scaled):
+        having = {name for name, make in MADE.items() if "faults" in make(RUN)}
+    native_only = {"heat_dissipation", "heat_ratio"}
+    assert having == {"probes", "trees", *({"stand"} if scaled else native_only)}
+
+
+def test_a_fault_of_another_level_is_not_lost_unheard():
+    made = stand()
+    made["quality"][0, 0] = 1 << 40
+    defined = flags_defined(Flag("fault", 40, True, "a fault of a record"))
+    with defined, pytest.raises(ValueError, match="stand: a fault is set that is not one of this"):
+        netcdf.stand_dataset(made, site(), RUN)
+
+
 def test_the_native_files_say_how_a_value_stands_for_its_interval(files):
     with netCDF4.Dataset(files / "heat_dissipation.nc") as file:
         assert file["heated_difference"].cell_methods == "time: mean"
@@ -330,7 +349,7 @@ def test_the_hashes_of_thousands_of_files_fit(tmp_path):
 
 BY_ITSELF = """
 import sys, time
-sys.path[:0] = [{root!r}, {tests!r}]
+sys.path[:0] = [{root!r}, {tests!r} + "/pipeline", {tests!r} + "/support"]
 import test_netcdf as made
 time.sleep({wait})
 for name, make in made.MADE.items():
@@ -340,7 +359,7 @@ for name, make in made.MADE.items():
 
 def test_the_same_dataset_gives_the_same_bytes(tmp_path):
     """In two processes, seconds apart, with unlike hash seeds and unlike garbage in memory."""
-    root, tests = str(Path(netcdf.__file__).parents[2]), str(Path(__file__).parent)
+    root, tests = str(Path(netcdf.__file__).parents[2]), str(Path(__file__).parents[1])
     for seed, wait in (("1", 0), ("2", 1.1)):
         out = tmp_path / seed
         out.mkdir()

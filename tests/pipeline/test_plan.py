@@ -197,5 +197,13 @@ def test_the_published_wound_is_left_out_beside_where_it_does_not_hold():
     early = with_probe("P16", window_from_s=30.0, window_to_s=60.0)
     published = ("heat_ratio", "wound", "published")
     assert published in methods_beside(SITE, wound_by("strip", "all"))[0]
-    chosen, left_out = methods_beside(early, wound_by("strip", "all"))
+    # It still holds for the other probes; where it holds for none it is left out.
+    assert published in methods_beside(early, wound_by("strip", "all"))[0]
+    names = [row.probe for row in SITE.table("probes") if row.method == "heat_ratio"]
+    rows = tuple(
+        row.model_copy(update={"window_from_s": 30.0}) if row.probe in names else row
+        for row in SITE.table("probes")
+    )
+    none = replace(SITE, tables={**SITE.tables, "probes": rows})
+    chosen, left_out = methods_beside(none, wound_by("strip", "all"))
     assert published in left_out and published not in chosen

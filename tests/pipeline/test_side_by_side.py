@@ -10,9 +10,11 @@ import pandas as pd
 import pytest
 
 from sapflux.errors import RecipeError
+from sapflux.pipeline import side_by_side
 from sapflux.pipeline.compute import compute
 from sapflux.pipeline.plan import methods_beside, plan_faults
 from sapflux.pipeline.recipe import find_recipe, load_recipe, read_recipe
+from sapflux.pipeline.scale import scale
 from sapflux.pipeline.side_by_side import with_spread
 from sapflux.site import inventory
 from sapflux.site.load import load_site
@@ -72,6 +74,38 @@ def test_a_method_beside_gives_what_a_recipe_with_it_gives(site, own, chain, sta
         months = rows.loc["month", stand, "all"]
         assert months["difference_mm"].sum() == pytest.approx(row["difference_mm"])
     assert rows["difference_mm"].abs().max() > 1.0
+
+
+@pytest.mark.parametrize(
+    ("chain", "stage"),
+    [
+        ("heat_dissipation", "zero_flow_difference"),
+        ("heat_dissipation", "flux_density"),
+        ("heat_ratio", "wound"),
+    ],
+)
+def test_methods_run_together_give_the_bytes_of_runs_of_their_own(
+    site, own, monkeypatch, chain, stage
+):
+    """flux_density: its method is followed by a stage before it, which is then not shared."""
+    scaled = []
+
+    def kept(*arguments, **more):
+        scaled.append(scale(*arguments, **more))
+        return scaled[-1]
+
+    monkeypatch.setattr(side_by_side, "scale", kept)
+    recipe = recipe_of(chain, stage, "all")
+    found = compute(site, recipe, logs=own.logs)
+    methods = [method for _, _, method in methods_beside(site, recipe)[0]]
+    assert len(methods) == len(scaled) > 0
+    for method, beside in zip(methods, scaled, strict=True):
+        alone = compute(site, PLAIN.with_method(chain, stage, method), logs=own.logs)
+        for name in ("flux_density", "quality", "probe_flow"):
+            assert beside.probes[name].values.tobytes() == alone.probes[name].values.tobytes()
+        for one, table, rows in found.beside.evidence:
+            if one == method:
+                pd.testing.assert_frame_equal(rows, alone.evidence[table], check_exact=True)
 
 
 def test_running_methods_beside_changes_no_result_of_the_recipe(site, own):

@@ -133,7 +133,7 @@ def cube_of(early, late, quality=0):
         {
             "early_log_ratio": (record, np.reshape(early, shape)),
             "late_log_ratio": (record, np.reshape(late, shape)),
-            "quality": (record, np.broadcast_to(np.int32(quality), shape)),
+            "quality": (record, np.broadcast_to(np.int64(quality), shape)),
         },
         {"probe": ["b1"], "point": [1], "time": ends},
     )

@@ -414,7 +414,7 @@ def few(frame, ends, first, last, live):
     made = frame.copy(deep=True)
     made["live_trees"].values[:, where] = live
     made["stand_transpiration"].values[:, where] = np.nan
-    bits = np.zeros(made["stand_transpiration"].shape, np.int32)
+    bits = np.zeros(made["stand_transpiration"].shape, np.int64)
     bits[:, where] = quality.FLAGS["few_trees"].mask
     made["quality"] = (("stand_species", "time"), bits)
     return made

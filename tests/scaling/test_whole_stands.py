@@ -18,7 +18,7 @@ def strata():
             "stand_transpiration": (dims, [[1.0, 2.0, 0.0], [3.0, NAN, 0.0], [5.0, 5.0, 5.0]]),
             "stand_filled_share": (dims, [[0.0, 0, 0], [1.0, 0, 0], [0.0, 0, 0]]),
             "live_trees": (dims, np.array([[3, 3, 0], [4, 2, 0], [5, 5, 5]])),
-            "quality": (dims, np.array([[0, 1, 0], [4, 8, 0], [0, 0, 0]], np.int32)),
+            "quality": (dims, np.array([[0, 1, 0], [4, 8, 0], [0, 0, 0]], np.int64)),
             "stand_origin": (dims, np.array(
                 [[1, 1, KINDS["assumed_zero"]], [2, 0, KINDS["assumed_zero"]], [1, 1, 1]])),
         },

@@ -42,6 +42,9 @@ def test_a_record_belongs_where_its_whole_interval_lies():
         [-1, -1, 0, 0, -1, 1, 1, -1],
         [-1] * 8,
     ]
+    # stamps of another resolution
+    fine = installation_numbers(site, ["A", "B", "C"], times.astype("datetime64[ns]"), 600)
+    assert fine.tolist() == numbers.tolist()
     begun = latest_begun(site, ["A", "B"], times, 600)
     assert begun.tolist() == [[0] * 8, [0, 0, 0, 0, 0, 1, 1, 1]]
 

@@ -36,7 +36,7 @@ def exact(tmp_path_factory):
     folder = tmp_path_factory.mktemp("exact") / "orvelin"
     truth = write_copy(load_site(SITE), folder, seed=7, days=DAYS, knowledge="exact",
                        gradients=False)  # fmt: skip
-    site, recipe = load_site(folder), load_recipe()
+    site, recipe = load_site(folder), load_recipe().alone()
     return truth, site, recipe, compute(site, recipe).logs
 
 
@@ -88,7 +88,8 @@ ALTERED = {
     "calibration exponent 5 % high": scaled("calibrations", exponent=1.05),
     "dry density 10 % high": scaled("wood", dry_density_kg_m3=1.1),
     "water content 20 % high": scaled("wood", water_content=1.2),
-    "spacing 10 % high": scaled("probes", spacing_downstream_mm=1.1, spacing_upstream_mm=1.1),
+    # by more than 0.5 mm the published wound correction refuses the probe
+    "spacing 5 % high": scaled("probes", spacing_downstream_mm=1.05, spacing_upstream_mm=1.05),
     "wound 15 % wide": scaled("wounds", width_mm=1.15),
     "sapwood 10 % deep": scaled("cores", sapwood_depth_cm=1.1),
     "diameters 5 % large": scaled("surveys", diameter_cm=1.05),
@@ -163,24 +164,32 @@ def test_trees_and_probes_are_near_their_truth_when_all_is_known(rehearsed):
         assert table["bias"].abs().max() < 0.06
 
 
-def test_the_same_seed_gives_the_same_report_and_another_one_another(tmp_path):
-    def report(seed, place):
-        found = rehearse(SITE, tmp_path / place, seed=seed, days=20)
-        return Path(write_reports(found)[0]).read_bytes()
-
-    first = report(3, "a")
-    assert report(3, "b") == first
-    assert report(3, "a") == first  # a former rehearsal is replaced
-    assert report(4, "a") != first
+def report(out, seed):
+    found = rehearse(SITE, out, seed=seed, days=10)
+    return Path(write_reports(found)[0]).read_bytes()
 
 
-def test_a_rehearsal_cut_short_is_replaced_and_a_folder_of_others_is_not(tmp_path):
-    place = tmp_path / "orvelin" / "seed_3_estimated"
-    rehearse(SITE, tmp_path, seed=3, days=10)
-    rehearse(SITE, tmp_path, seed=3, days=10)
+@pytest.fixture(scope="module")
+def short(tmp_path_factory):
+    """(its folder, the bytes of its report) of a short rehearsal of seed 3."""
+    out = tmp_path_factory.mktemp("short")
+    return out, report(out, 3)
+
+
+def test_the_same_seed_gives_the_same_report_and_another_one_another(short, tmp_path):
+    _, first = short
+    assert report(tmp_path, 3) == first
+    assert report(tmp_path, 4) != first
+
+
+def test_a_rehearsal_cut_short_is_replaced_and_a_folder_of_others_is_not(short):
+    out, first = short
+    place = out / "orvelin" / "seed_3_estimated"
+    (place / "rehearsal.json").unlink()
+    assert report(out, 3) == first
     (place / ".rehearsal").unlink()
     with pytest.raises(SiteError, match="something is there already"):
-        rehearse(SITE, tmp_path, seed=3, days=10)
+        rehearse(SITE, out, seed=3, days=10)
 
 
 def plan_without_logs(folder):
