@@ -60,6 +60,7 @@ ROWS = [
     Flag("excluded", 4, True, "excluded by a person, with a reason"),
     Flag("heater_failure", 5, True, "heater off, or its wiring broken"),
     Flag("heater_recovery", 6, True, "wood still warming after the heater was off"),
+    Flag("frozen_wood", 32, True, "the wood is frozen or still thawing"),
     Flag("no_baseline", 7, True, "no zero-flow reference near enough"),
     Flag("no_contact", 8, True, "too little of the needle in sapwood to be corrected"),
     Flag("contact_undefined", 9, True, "colder than sapwood contact allows"),

@@ -24,6 +24,7 @@ ORDER = {
         "heating_cycle",
         "natural_gradient",
         "screen_power_loss",
+        "screen_frost",
         "zero_flow_difference",
         "sapwood_contact",
         "flow_index",
@@ -33,6 +34,7 @@ ORDER = {
     "heat_ratio": (
         "rises",
         "log_heat_ratio",
+        "screen_frost",
         "thermal_diffusivity",
         "zero_flow_ratio",
         "heat_pulse_velocity",

@@ -13,6 +13,9 @@ PAIR_ENDS = (
     "no gradient is taken off, which may make a step"
 )
 NOT_LOGGED = "not logged, so that it keeps no night from setting a zero-flow baseline: {}"
+NO_TEMPERATURE = (
+    "neither stem nor air temperature is logged: frozen wood is not found and not left out"
+)
 # What keeps a night from setting a baseline, and the names of which one at least must be given.
 BARS = {
     "frost (air or stem temperature)": {"air_temperature", "stem_temperature"},
@@ -36,6 +39,7 @@ def notes_of_corrections(site, recipe):
     methods = methods_of(site)
     return [
         *_left_out(recipe, methods),
+        *_frost(site, methods),
         *(_heat_dissipation(site, recipe) if "heat_dissipation" in methods else ()),
         *(_heat_ratio(site, recipe) if "heat_ratio" in methods else ()),
     ]
@@ -47,6 +51,11 @@ def _left_out(recipe, methods):
         missing = [name for name in ORDER[method] if name not in listed]
         if missing:
             yield LEFT_OUT.format(method.replace("_", " "), ", ".join(missing))
+
+
+def _frost(site, methods):
+    if methods and not {"air_temperature", "stem_temperature"} & given_names(site, methods[0]):
+        yield NO_TEMPERATURE
 
 
 def _step(recipe, chain, stage):

@@ -89,6 +89,13 @@ def test_what_bars_no_night_for_want_of_a_log_is_told():
     assert f"{told}a wet connector (precipitation)" in notes_of_corrections(dry, RECIPE)
 
 
+def test_a_site_without_a_temperature_finds_no_frost():
+    told = "neither stem nor air temperature is logged: frozen wood is not found and not left out"
+    assert told not in notes_of_corrections(SITE, RECIPE)
+    blind = with_rows("channels", lambda row: None if row.quantity == "air_temperature" else row)
+    assert told in notes_of_corrections(blind, RECIPE)
+
+
 def test_an_additive_offset_says_that_the_gain_stays_wrong():
     additive = RECIPE.with_method("heat_ratio", "heat_pulse_velocity", "additive_offset")
     (note,) = [n for n in notes_of_corrections(SITE, additive) if "additive_offset" in n]

@@ -46,13 +46,13 @@ def test_missing_weather_names_the_methods_that_do_without():
     dry = without(SITE, "channels", lambda row: row.quantity != "relative_humidity")
     found = faults(dry)
     assert found == [
-        f"{RECIPE}, [[heat_dissipation]] step 5: stage 'zero_flow_difference', method "
+        f"{RECIPE}, [[heat_dissipation]] step 6: stage 'zero_flow_difference', method "
         "'quiet_nights', needs vapour_pressure_deficit, which neither the site nor an earlier "
         "stage gives. The site would give it by channels of kind site: vapour_pressure_deficit, "
         "or air_temperature and relative_humidity. Methods that do without: nightly_maximum, "
         "moving_window, double_regression; change it in a copy of the recipe (`sapflux stages "
         "--recipe NAME` prints one).",
-        f"{RECIPE}, [[heat_ratio]] step 4: stage 'zero_flow_ratio', method 'quiet_nights', needs "
+        f"{RECIPE}, [[heat_ratio]] step 5: stage 'zero_flow_ratio', method 'quiet_nights', needs "
         "vapour_pressure_deficit, which neither the site nor an earlier stage gives. The site "
         "would give it by channels of kind site: vapour_pressure_deficit, or air_temperature and "
         "relative_humidity. Methods that do without: all_nights; change it in a copy of the recipe "
@@ -65,7 +65,7 @@ def test_missing_weather_names_the_methods_that_do_without():
 
 def test_a_missing_table_is_named():
     assert faults(without(SITE, "wounds")) == [
-        f"{RECIPE}, [[heat_ratio]] step 6: stage 'wound' needs wound_width, which neither the "
+        f"{RECIPE}, [[heat_ratio]] step 7: stage 'wound' needs wound_width, which neither the "
         "site nor an earlier stage gives. The site would give it in wounds.csv (width_mm)."
     ]
 
@@ -88,7 +88,7 @@ def test_a_missing_stage_is_named():
         f"{RECIPE}, [[heat_dissipation]] step {step}: stage {name!r} needs zero_flow_difference, "
         "which neither the site nor an earlier stage gives. Add a stage that makes it before "
         "this one."
-        for step, name in [(5, "sapwood_contact"), (6, "flow_index")]
+        for step, name in [(6, "sapwood_contact"), (7, "flow_index")]
     ]
 
 

@@ -26,6 +26,7 @@ def test_the_default_recipe_comes_with_the_program():
         "heating_cycle",
         "natural_gradient",
         "screen_power_loss",
+        "screen_frost",
         "zero_flow_difference",
         "sapwood_contact",
         "flow_index",
@@ -50,7 +51,7 @@ def test_an_unknown_stage_names_the_nearest():
     assert fault == (
         "oak.toml, [[heat_dissipation]] step 2: no stage 'flow_indx'. Did you mean 'flow_index'? "
         "Known: ageing, flow_index, flux_density, heated_difference, heating_cycle, "
-        "natural_gradient, sapwood_contact, screen_power_loss, zero_flow_difference."
+        "natural_gradient, sapwood_contact, screen_frost, screen_power_loss, zero_flow_difference."
     )
 
 
