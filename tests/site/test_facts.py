@@ -352,7 +352,7 @@ def test_wounds_grow_by_their_time_course_until_the_next_date():
     # H: at its date at most; 1 and 3 and 4.5 days of 4 by w(t) = 2.4 - 0.6 exp(-t / 4).
     course = 2.4 - 0.6 * np.exp(-np.array([0.0, 1.0, 3.0, 4.5]) / 4.0)
     np.testing.assert_allclose(laid[1] * 1e3, course, rtol=1e-12)
-    # A: halfway from 1.6 to 1.8 by a line; a day of ten by the course; then what was measured.
+    # A: halfway from 1.6 to 1.8 by a line; one day of growth by exp(-1 / 10); then the next row.
     grown = 2.8 - 1.0 * np.exp(-0.1)
     np.testing.assert_allclose(laid[0] * 1e3, [1.6, 1.7, grown, 2.0], rtol=1e-12)
 
