@@ -43,7 +43,8 @@ def rehearse(options):
             print(f"  {name}s: {own['number']}, mean bias {own['mean_bias']:+.1%}{about}")
     for text in found.left_out:
         print(note(text))
-    print(note(unverified_values(found.unverified)))
+    if found.unverified:
+        print(note(unverified_values(found.unverified)))
     print("\n  The forest is invented, with the site's stems, probes and tables: it shows what the")
     print("  design and the pipeline can deliver, not what the site transpires.")
     print(f"  Written: {', '.join(map(str, paths))}")

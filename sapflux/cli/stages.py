@@ -10,7 +10,8 @@ import sapflux.scaling
 from sapflux.cli import DONE, USAGE
 from sapflux.cli.text import columns, print_json
 from sapflux.errors import nearest
-from sapflux.pipeline.recipe import PARTS, find_recipe, known_settings
+from sapflux.pipeline.recipe import find_recipe
+from sapflux.pipeline.recipe_parts import PARTS, known_settings
 from sapflux.site.quantities import table_lines
 from sapflux.stage import ORDER, REGISTRY
 

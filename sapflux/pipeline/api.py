@@ -128,7 +128,7 @@ def summary(run):
         "files": len(ledger),
         "ledger": {name: int(number) for name, number in classes.items()},
         "season": run.table("season").to_dict("records") if scaled else [],
-        "beside": methods_beside(run),
+        "beside": season_beside(run),
         "refused": [*refused_days(run.table("daily"))] if scaled else [],
         "notes": run.record["notes"],
         "unverified": run.record["unverified"],
@@ -141,7 +141,7 @@ def summary(run):
     }
 
 
-def methods_beside(run):
+def season_beside(run):
     """What other methods of a stage made of each stand's season: rows, none without any."""
     if not (run.folder / "methods_beside.csv").is_file():
         return []

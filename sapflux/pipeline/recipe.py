@@ -12,15 +12,11 @@ import sapflux.correction
 import sapflux.scaling
 from sapflux.errors import Fault, RecipeError, nearest
 from sapflux.pipeline.agreement import disagreements, followed
-from sapflux.pipeline.join import Joined
-from sapflux.scaling.completeness import Completeness
+from sapflux.pipeline.recipe_parts import number_fitting, part_settings
 from sapflux.stage import CHAINS, REGISTRY, Stage
 
 BESIDE = "beside"  # key of a step: methods to run beside its own
 ALL = "all"
-JOIN = {"least_coverage": (0.75, 0.0, 1.0)}  # default, lowest, highest
-# The two parts of a recipe that are no stages, and where their settings are explained.
-PARTS = {"join": Joined, "totals": Completeness}
 
 
 @dataclass(frozen=True)
@@ -174,8 +170,8 @@ def read_recipe(raw, where, name):
         title=str(raw.get("title", name)),
         where=where,
         chains=MappingProxyType(chains),
-        join=MappingProxyType(_part_settings(raw, "join", where, faults)),
-        totals=MappingProxyType(_part_settings(raw, "totals", where, faults)),
+        join=MappingProxyType(part_settings(raw, "join", where, faults)),
+        totals=MappingProxyType(part_settings(raw, "totals", where, faults)),
     )
     if faults:
         raise RecipeError(faults)
@@ -257,19 +253,7 @@ def _fitting(value, parameter, limits):
         return value, ""
     default = parameter.default
     kind = float if default is inspect.Parameter.empty else type(default)
-    return _number_fitting(value, kind, limits)
-
-
-def _number_fitting(value, kind, limits):
-    number = isinstance(value, int | float) and not isinstance(value, bool)
-    if kind is float and number:
-        value = float(value)
-    elif type(value) is not kind:
-        words = {float: "a number", int: "a whole number", bool: "true or false", str: "text"}
-        return value, f"It takes {words.get(kind, kind.__name__)}."
-    if limits and not limits[0] <= value <= limits[1]:
-        return value, f"It takes {limits[0]:g} to {limits[1]:g}."
-    return value, ""
+    return number_fitting(value, kind, limits)
 
 
 def _order_faults(steps, where):
@@ -292,35 +276,6 @@ def _order_faults(steps, where):
                     f"stage {step.stage.name!r} stands before {earlier!r} (step {place[earlier]})",
                     f"{step.stage.name!r} works on what {earlier!r} has made: move it after.",
                 )
-
-
-def known_settings(part):
-    """name -> (default, lowest, highest) of a part of a recipe that is no stage."""
-    if part == "join":
-        return JOIN
-    limits = Completeness.limits()
-    return {name: (value, *limits[name]) for name, value in Completeness.defaults().items()}
-
-
-def _part_settings(raw, part, where, faults):
-    """The settings of a part that is no stage."""
-    known = known_settings(part)
-    values = {key: default for key, (default, _, _) in known.items()}
-    table = raw.get(part, {})
-    if not isinstance(table, dict):
-        faults.append(Fault(f"{where}, [{part}]", "not a table", f"Write its keys under [{part}]."))
-        return values
-    for key, value in table.items():
-        if key not in known:
-            faults.append(
-                Fault(f"{where}, [{part}]", f"unknown setting {key!r}", nearest(key, known))
-            )
-            continue
-        value, problem = _number_fitting(value, type(values[key]), known[key][1:])
-        if problem:
-            faults.append(Fault(f"{where}, [{part}]", f"{key} = {value!r}", problem))
-        values[key] = value
-    return values
 
 
 # The stage modules are imported for what they register.
