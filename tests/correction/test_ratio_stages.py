@@ -390,7 +390,8 @@ def test_wound_strip_keeps_the_sign_and_never_slows(cm_h, diffusivity, width):
     found = made["heat_pulse_velocity"].item()
     assert np.isnan(found) == made["beyond_wound_limit"].item()
     if np.isfinite(found):
-        assert np.sign(found) == np.sign(cm_h) and abs(found) >= abs(cm_h * CM_H)
+        given_velocity = velocity.item()  # 0 where the smallest numbers vanish in its unit
+        assert np.sign(found) == np.sign(given_velocity) and abs(found) >= abs(given_velocity)
 
 
 def test_wound_table_is_told_to_be_from_memory():
